@@ -1,0 +1,1 @@
+"""Command line: one thin module a command; nothing heavy is imported before a command needs it."""

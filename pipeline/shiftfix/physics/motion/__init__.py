@@ -1,0 +1,1 @@
+"""Emitter and receiver motions: state, acceleration and partial derivatives at given epochs."""

@@ -1,0 +1,1 @@
+"""Embedding and scale: the same pipeline inside another program."""

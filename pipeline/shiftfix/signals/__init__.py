@@ -1,0 +1,1 @@
+"""Samples to frequency: numerics of tone, ridge and burst estimation."""

@@ -1,0 +1,1 @@
+"""Conformance checks and hypothesis strategies for plugin authors."""

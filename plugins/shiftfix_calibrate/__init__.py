@@ -1,0 +1,1 @@
+"""Station oscillators and clocks from emitters of known motion."""

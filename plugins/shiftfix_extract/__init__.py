@@ -1,0 +1,1 @@
+"""Samples to received frequency."""

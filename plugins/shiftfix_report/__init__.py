@@ -1,0 +1,1 @@
+"""Products: text report, residuals, solution file."""

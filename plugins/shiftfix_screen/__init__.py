@@ -1,0 +1,1 @@
+"""Quality control of frequency tables."""

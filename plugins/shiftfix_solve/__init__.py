@@ -1,0 +1,1 @@
+"""Search, fix and weigh: from frequencies to position, velocity and rest frequency."""
