@@ -8,7 +8,7 @@ EPOCH_TAI_NS = 1_609_459_237_000_000_000  # 2021-01-01T00:00:00 UTC
 
 
 class SpinFrame:
-    """Uniform rotation about an axis 0.12 degrees away from that of the GCRS: a stand-in for the Earth's orientation."""
+    """Uniform rotation about an axis 0.12 degrees off that of the GCRS: a stand-in for the Earth's orientation."""
 
     rate = 7.292115e-5
 

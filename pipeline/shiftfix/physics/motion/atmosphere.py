@@ -76,8 +76,8 @@ def density(
 ) -> tuple[np.ndarray, np.ndarray, np.ndarray]:
     """Return the density and its derivatives along the vertical and with the cosine of the bulge angle.
 
-    The tabled densities are interpolated exponentially in height; the first interval is continued down to 80 km, and the
-    density is constant below that, where nothing orbits.
+    The tabled densities are interpolated exponentially in height; the first interval is continued down to 80 km, and
+    the density is constant below that, where nothing orbits.
 
     Parameters
     ----------

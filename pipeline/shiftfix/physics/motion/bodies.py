@@ -1,8 +1,8 @@
 """Geocentric positions of Sun and Moon over an arc, and their tidal pull.
 
-Positions come from the analytic series of ERFA (`epv00`: Earth about the Sun, 5e3 m; `moon98`: Meeus 1998, 1e4 m), sampled
-every hour and splined: the spline adds below 0.1 m. A Moon wrong by 10 km changes the pull on a navigation satellite by
-1e-10 m/s2, 5 mm after 3 h.
+Positions come from the analytic series of ERFA (`epv00`: Earth about the Sun, 5 km; `moon98`: Meeus 1998, 10 km),
+sampled every hour and splined: the spline adds below 0.1 m. A Moon wrong by 10 km changes the pull on a navigation
+satellite by 3e-10 m/s2, 2 cm after 3 h.
 """
 
 from __future__ import annotations
@@ -59,8 +59,8 @@ def tidal_acceleration(position: np.ndarray, body: np.ndarray, gm_m3_s2: float) 
     Returns
     -------
     acceleration : ndarray (k, 3)
-        [m/s2]. The difference of the two pulls loses digits: 6e-3 m/s2 (Sun) times 2e-16, 1e-18 m/s2, which is 4 nm in a
-        day; the form that avoids it is not needed.
+        [m/s2]. The difference of the two pulls loses digits: 6e-3 m/s2 (Sun) times 2e-16 is 1e-18 m/s2, 4 nm in a day,
+        so the form that avoids it is not needed.
     gradient : ndarray (k, 3, 3)
         d acceleration / d position [1/s2].
     """

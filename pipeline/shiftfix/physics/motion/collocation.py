@@ -1,8 +1,8 @@
 """Chebyshev collocation of second-order differential equations: the matrices, and piecewise polynomial evaluation.
 
-A cell [start, start + 2 half] is mapped on tau in [-1, 1] with t = start + half (tau + 1); `half` is negative for a cell
-that runs backward in time. A function of time is held by its values at the Gauss-Lobatto points tau_j = -cos(pi j / N),
-so that the first node is the start of the cell and the last node its end.
+A cell [start, start + 2 half] is mapped on tau in [-1, 1] with t = start + half (tau + 1); `half` is negative for a
+cell that runs backward in time. A function of time is held by its values at the Gauss-Lobatto points
+tau_j = -cos(pi j / N), so that the first node is the start of the cell and the last node its end.
 """
 
 from __future__ import annotations
@@ -42,7 +42,7 @@ class Collocation(NamedTuple):
 
 
 @lru_cache(maxsize=8)
-def collocation(degree: int, fine_points: int = 192) -> Collocation:
+def collocation(degree: int, fine_points: int = 384) -> Collocation:
     """Return the matrices of Chebyshev collocation for one degree (computed once in a process).
 
     Parameters
@@ -50,7 +50,8 @@ def collocation(degree: int, fine_points: int = 192) -> Collocation:
     degree : int
         Degree N of the polynomial of the acceleration; position has degree N + 2.
     fine_points : int
-        Number of Gauss-Legendre points of the fine grid.
+        Number of Gauss-Legendre points of the fine grid: with 384 the edges of the shadow cost 0.5 mm in a day of a low
+        or of a very eccentric orbit, with 192 10 mm in the latter.
 
     Notes
     -----
@@ -132,9 +133,8 @@ class PiecewiseChebyshev:
             times_s = times_s[order]
         tau = (times_s - self._start[cell]) / self._half[cell] - 1.0
         edges = np.concatenate([[0], np.flatnonzero(np.diff(cell)) + 1, [cell.size]])
-        blocks = [
-            (int(self._order[cell[a]]), slice(int(a), int(b))) for a, b in zip(edges[:-1], edges[1:], strict=True) if b > a
-        ]
+        pairs = zip(edges[:-1].tolist(), edges[1:].tolist(), strict=True)
+        blocks = [(int(self._order[cell[a]]), slice(a, b)) for a, b in pairs if b > a]
         return blocks, tau, order
 
 

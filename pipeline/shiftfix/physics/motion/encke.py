@@ -19,8 +19,8 @@ def propagate_batch(states: np.ndarray, times_s: np.ndarray) -> tuple[np.ndarray
 
     Encke's method, linearised about the two-body orbit: in LEO within 1 m after 15 min and 1 km after an orbit, within
     1 m for a navigation satellite after 4 h (J2 alone; what else is left out there, Sun and Moon above all, is 30 m).
-    Orbits that need more than 32 cells on a side (several days, or very eccentric) or come below the Earth's surface are
-    plain two-body orbits.
+    Orbits that need more than 32 cells on a side (several days, or very eccentric) or come below the Earth's surface
+    are plain two-body orbits.
 
     Parameters
     ----------

@@ -90,8 +90,8 @@ class EarthField:
 
     Notes
     -----
-    Left out: terms of degree 5 and above but two zonals (about 1e-7 of the monopole each in LEO: 10 to 30 m after a day),
-    tides (3e-8 of it) and the rates of the coefficients (below 1e-10).
+    Left out: terms of degree 5 and above but two zonals (about 1e-7 of the monopole each in LEO, hundreds of metres
+    after a day), tides (3e-8 of it) and the rates of the coefficients (below 1e-10).
     """
 
     def __init__(self, degree: int, zonal_degree: int):

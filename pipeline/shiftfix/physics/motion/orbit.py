@@ -95,8 +95,8 @@ class OrbitPath:
 class OrbitMotion:
     """Orbit about the Earth, bound to one arc.
 
-    Parameters are the GCRS position and velocity at the epoch of the arc, then the scales of radiation pressure and drag
-    that are estimated. `at` integrates the orbit and the variational equations over the span.
+    Parameters are the GCRS position and velocity at the epoch of the arc, then the scales of radiation pressure and
+    drag that are estimated. `at` integrates the orbit and the variational equations over the span.
 
     Parameters
     ----------
@@ -167,8 +167,8 @@ class OrbitMotion:
         Raises
         ------
         ValueError
-            If a parameter is not finite, their number is wrong, or the orbit cannot be integrated (too close to the Earth's
-            centre: below half its radius).
+            If a parameter is not finite, their number is wrong, or the orbit cannot be integrated (it comes closer to
+            the Earth's centre than half its radius).
         """
         parameters = np.asarray(parameters, dtype=float)
         count = len(self.parameter_names)

@@ -10,15 +10,15 @@ SUN_RADIUS_M = 6.957e8
 """Nominal solar radius, IAU 2015 resolution B3."""
 
 SHADOW_RADIUS_M = 6378137.0
-"""Radius of the Earth that throws the shadow: the equatorial one of WGS84. The flattening moves an edge by up to 21 km, the
-atmosphere by some 20 km: up to 5 s of a LEO pass through the edge, 5e-7 m/s for the nominal acceleration."""
+"""Radius of the Earth that throws the shadow: the equatorial one of WGS84. The flattening moves an edge by up to 21 km,
+the atmosphere by some 20 km: up to 5 s of a LEO pass through the edge, 5e-7 m/s for the nominal acceleration."""
 
 
 def lit_fraction(position: np.ndarray, sun: np.ndarray) -> np.ndarray:
     """Return the part of the Sun's disc that is seen, 0 to 1.
 
-    The Earth's limb is taken as straight where it crosses the Sun's disc: exact at both ends of the penumbra, wrong by up
-    to 1.5 % of the disc inside it at geostationary height, 0.1 % in LEO.
+    The Earth's limb is taken as straight where it crosses the Sun's disc: exact at both ends of the penumbra, wrong by
+    up to 1.5 % of the disc inside it at geostationary height, 0.1 % in LEO.
 
     Parameters
     ----------

@@ -2,8 +2,8 @@
 
 All cells of a stretch are solved together by Newton's method (multiple shooting): the forces are evaluated once an
 iteration at all nodes of all cells; a dense linear system per cell gives the accelerations at its nodes as a linear
-function of its start state and of the force parameters; a chain of 6 x 6 products joins the cells. The linear functions of the
-last iteration are the solution of the variational equations.
+function of its start state and of the force parameters; a chain of 6 x 6 products joins the cells. The linear functions
+of the last iteration are the solution of the variational equations.
 """
 
 from __future__ import annotations
@@ -17,8 +17,8 @@ from shiftfix.physics.motion.forces import ForceModel, Surroundings
 
 _MAX_ITERATIONS = 14
 _CONVERGED_1 = 1e-8
-"""Relative change of position below which Newton's method stops; being quadratic it has then converged to 1e-15, and the
-gradients, taken one step earlier, are good to 1e-8."""
+"""Change of position, relative to the lowest radius, below which Newton's method stops; being quadratic it has then
+converged to 1e-15, and the gradients, taken one step earlier, are good to 1e-8."""
 
 LOWEST_RADIUS_M = 0.5 * 6378136.3
 """An orbit that comes closer to the Earth's centre is refused: half the Earth's radius."""
@@ -96,7 +96,7 @@ def solve(
     eye = np.arange(3 * n)
     twice = (half**2)[:, None, None] * grid.twice
     once = half[:, None, None] * grid.once
-    use = [6 + k for k, flag in enumerate((f for f in estimated if f))]
+    use = [6 + k for k, flag in enumerate(f for f in estimated if f)]
     for _ in range(_MAX_ITERATIONS):
         _check_radius(position, cells, grid)
         forces = model.at_nodes(around, position, velocity, *scales, grid)
@@ -134,7 +134,7 @@ def solve(
         if change < _CONVERGED_1 * LOWEST_RADIUS_M:
             break
         if not change < 1e3 * np.abs(starts[:, :3]).max():
-            raise ValueError("orbit: the integration diverges; the orbit is too close to the Earth's centre or too long")
+            raise ValueError("orbit: the integration diverges: the orbit comes too close to the Earth's centre")
     else:
         raise ValueError(f"orbit: the integration has not converged in {_MAX_ITERATIONS} iterations")
     _check_radius(position, cells, grid)
