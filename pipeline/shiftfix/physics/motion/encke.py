@@ -17,8 +17,9 @@ _PICARD_STEPS = 5
 def propagate_batch(states: np.ndarray, times_s: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
     """Return two-body orbits with the linearised effect of J2, for many states at once.
 
-    Encke's method, linearised about the two-body orbit: in LEO within 1 m after 15 min and 1 km after an orbit, within
-    1 m for a navigation satellite after 4 h (J2 alone; what else is left out there, Sun and Moon above all, is 30 m).
+    Encke's method, linearised about the two-body orbit. Against an integration with J2: 0.3 m after 15 min and 0.7 km
+    after a revolution of LEO, 0.3 m after 4 h of a navigation satellite (Sun, Moon and the rest of the field add 30 m
+    there, 100 m in the LEO pass); plain two-body orbits are wrong by 6 km, 50 km and 4 km.
     Orbits that need more than 32 cells on a side (several days, or very eccentric) or come below the Earth's surface
     are plain two-body orbits.
 

@@ -243,14 +243,17 @@ class OrbitMotion:
 
     def _guess(self, edges, chain_states) -> tuple[np.ndarray, np.ndarray]:
         """Return the two-body orbit at all nodes."""
-        positions, velocities = [], []
-        for edge, state in zip(edges, chain_states, strict=True):
-            half = 0.5 * np.diff(edge)
-            times = edge[:-1, None] - edge[0] + half[:, None] * (1.0 + self._grid.nodes)
-            position, velocity = kepler.propagate(state[:3], state[3:], times.ravel(), EGM2008_GM_M3_S2)
-            positions.append(position)
-            velocities.append(velocity)
-        return np.concatenate(positions), np.concatenate(velocities)
+        times = np.concatenate(
+            [
+                (edge[:-1, None] - edge[0] + 0.5 * np.diff(edge)[:, None] * (1.0 + self._grid.nodes)).ravel()
+                for edge in edges
+            ]
+        )
+        if len(edges) == 1 or np.array_equal(chain_states[0], chain_states[1]):
+            return kepler.propagate(chain_states[0, :3], chain_states[0, 3:], times, EGM2008_GM_M3_S2)
+        counts = [(edge.size - 1) * self._grid.nodes.size for edge in edges]
+        states = np.repeat(chain_states, counts, axis=0)
+        return kepler.propagate(states[:, :3], states[:, 3:], times, EGM2008_GM_M3_S2)
 
     def _fastest(self, guess) -> np.ndarray:
         """Return the largest angular rate [rad/s] in every cell."""
