@@ -12,7 +12,8 @@ class SpinFrame:
 
     rate = 7.292115e-5
 
-    def __init__(self):
+    def __init__(self, span_s=(-2.0e3, 4.4e4)):
+        self.span_s = span_s
         a, b = 0.0021, -0.0007
         tilt, upper = np.linalg.qr(np.array([[1.0, 0.0, a], [0.0, 1.0, b], [-a, -b, 1.0]]))
         self.tilt = tilt * np.sign(np.diag(upper))

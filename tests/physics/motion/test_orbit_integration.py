@@ -7,12 +7,14 @@ import numpy as np
 import pytest
 from scipy.integrate import solve_ivp
 
+from shiftfix.physics.constants import GM_MOON_M3_S2 as GM_MOON
+from shiftfix.physics.constants import GM_SUN_M3_S2 as GM_SUN
 from shiftfix.physics.motion.atmosphere import _TABLE
 from shiftfix.physics.motion.harmonics import EGM2008_COEFFICIENTS
 from shiftfix.physics.motion.orbit import Forces, OrbitMotion
 
 GM, RADIUS = 3.986004415e14, 6378136.3
-GM_SUN, GM_MOON, AU, LIGHT = 1.32712440018e20, 4.902800e12, 149597870700.0, 299792458.0
+AU, LIGHT = 149597870700.0, 299792458.0
 SUN_RADIUS = 6.957e8
 
 
