@@ -42,7 +42,7 @@ class Collocation(NamedTuple):
 
 
 @lru_cache(maxsize=8)
-def collocation(degree: int, panels: int = 24) -> Collocation:
+def collocation(degree: int, panels: int = 32) -> Collocation:
     """Return the matrices of Chebyshev collocation for one degree (computed once in a process).
 
     Parameters
@@ -50,7 +50,7 @@ def collocation(degree: int, panels: int = 24) -> Collocation:
     degree : int
         Degree N of the polynomial of the acceleration; position has degree N + 2.
     panels : int
-        Number of equal parts of the fine grid, with 16 Gauss-Legendre points each: with 24 the edges of the shadow cost
+        Number of equal parts of the fine grid, with 16 Gauss-Legendre points each: with 32 the edges of the shadow cost
         0.5 mm in a day of a low or of a very eccentric orbit, with 12 10 mm in the latter.
 
     Notes
