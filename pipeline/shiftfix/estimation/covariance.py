@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 from scipy.stats import chi2
@@ -30,6 +30,8 @@ class Considered:
         Unmodelled vertical electron content [1e16 /m2], independent from station to station.
     carrier_hz : float
         Carrier, for the ionosphere.
+    ut1_s : float
+        Error of UT1 when no Earth orientation is used: all Earth-fixed receivers turn together.
     """
 
     common_time_s: float = 0.0
@@ -38,12 +40,13 @@ class Considered:
     zenith_delay_m: float = 0.0
     vertical_tec: float = 0.0
     carrier_hz: float = 0.0
+    ut1_s: float = 0.0
 
 
 def considered_changes(fit: Fit, considered: Considered) -> dict[str, np.ndarray]:
     """Return, by source, the 1-sigma changes of z that considered errors cause: (n, k) columns, independent of each other.
 
-    Sources are `time tags`, `coordinates`, `troposphere` and `ionosphere`; absent when nothing is considered.
+    Sources are `time tags`, `coordinates`, `Earth rotation`, `troposphere` and `ionosphere`; absent when nothing is considered.
     """
     forward, rows = fit.forward, fit.forward.rows
     receivers = forward.receivers
@@ -64,6 +67,10 @@ def considered_changes(fit: Fit, considered: Considered) -> dict[str, np.ndarray
             for axis in range(3)
             if receivers[s].shifted is not None
         ]
+    if considered.ut1_s:
+        slopes = _coordinate_slopes(forward, fit)
+        turned = [np.cross([0.0, 0.0, 7.292115e-5], _itrs(r)) * considered.ut1_s for r in receivers]
+        out["Earth rotation"] = [sum(slopes[a] * np.array([t[a] for t in turned])[rows.station] for a in range(3))]
     if considered.zenith_delay_m or considered.vertical_tec:
         link = forward.links(fit.path)
         if considered.zenith_delay_m:
@@ -78,10 +85,13 @@ def considered_changes(fit: Fit, considered: Considered) -> dict[str, np.ndarray
     return {name: np.column_stack(columns) for name, columns in out.items() if columns}
 
 
+def _itrs(receiver: Receiver) -> np.ndarray:
+    """Return the Earth-fixed position of a ground receiver; a moving one has its own frame and is not turned."""
+    return getattr(receiver.path, "position_itrs_m", np.zeros(3))
+
+
 def _time_slope(forward: ForwardModel, fit: Fit, step: float = 0.02) -> np.ndarray:
     """Return d z / d (time-tag bias): the tag is late by the bias, so the true time is earlier."""
-    from dataclasses import replace
-
     rows = forward.rows
     early, late = (
         ForwardModel(
@@ -93,8 +103,6 @@ def _time_slope(forward: ForwardModel, fit: Fit, step: float = 0.02) -> np.ndarr
 
 
 def _coordinate_slopes(forward: ForwardModel, fit: Fit, step: float = 1.0) -> list[np.ndarray]:
-    from dataclasses import replace
-
     out = []
     for axis in range(3):
         delta = np.zeros(3)

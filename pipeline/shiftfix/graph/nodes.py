@@ -120,6 +120,9 @@ class NodeContext:
     emitter_classes : tuple of str
         Declared in the pipeline file.
     title : str
+    parameters : callable
+        `parameters(cls, given, name)` builds a dataclass made with `param` from a table of the pipeline file (the value of
+        the node's parameter `name`), with the same checks and messages as a node's own parameters.
     display_path : callable
         `display_path(path)` gives a path as the user wrote it: relative to the pipeline file, never absolute.
     """
@@ -135,6 +138,7 @@ class NodeContext:
     readers: Mapping[str, NodeSpec]
     emitter_classes: tuple[str, ...] = ()
     title: str = ""
+    parameters: Callable[[type, Mapping[str, Any], str], Any] = lambda cls, given, name: cls(**given)
     display_path: Callable[[Path], str] = str
 
 

@@ -32,7 +32,9 @@ class OffsetTable(Table):
         Column("common_sigma_1", "float", "1-sigma that all rows of the station share", default=0.0, minimum=0.0),
         Column("phase_sigma_s", "float", "1-sigma of the clock phase at the ends", default=0.0, minimum=0.0),
         Column("phase_arc_id", "text", "unbroken clock-phase history", default=""),
-        Column("time_offset_s", "float", "time tag minus true time at the middle", default=0.0),
+        Column("time_offset_start_s", "float", "time tag minus true time at the start", default=0.0),
+        Column("time_offset_stop_s", "float", "time tag minus true time at the end", default=0.0),
+        Column("zenith_correction_m", "float", "zenith tropospheric delay minus that of the standard atmosphere", default=0.0),
         Column("known_emitters_1", "int", "number of known emitters used", default=0),
     )
     datum: str = ""

@@ -71,6 +71,8 @@ class Solution(Table):
         The verdict in one plain sentence, with the unobservable direction when refused.
     motion : str
     epoch_tai_ns : int
+    epoch_utc : str
+        The same epoch as UTC text ending in Z.
     frame : {"GCRS", "ITRS"}
     position_m, velocity_m_s : ndarray, shape (3,), or None
     covariance : ndarray, shape (6, 6), or None
@@ -121,6 +123,7 @@ class Solution(Table):
     verdict_text: str = ""
     motion: str = ""
     epoch_tai_ns: int = 0
+    epoch_utc: str = ""
     frame: str = "GCRS"
     position_m: np.ndarray | None = None
     velocity_m_s: np.ndarray | None = None
