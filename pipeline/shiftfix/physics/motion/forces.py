@@ -16,7 +16,11 @@ from shiftfix.physics.motion.atmosphere import TOP_M, bulge_direction, density
 from shiftfix.physics.motion.bodies import SunMoon, tidal_acceleration
 from shiftfix.physics.motion.collocation import Collocation
 from shiftfix.physics.motion.harmonics import EGM2008_GM_M3_S2, EGM2008_RADIUS_M, earth_field
-from shiftfix.physics.motion.radiation import lit_fraction, radiation_acceleration
+from shiftfix.physics.motion.radiation import limb_angle, lit_fraction, radiation_acceleration
+
+_CLEAR_RAD = 0.3
+"""A cell whose nodes all see the Sun this far above the limb, or below it, has no edge of the shadow: between two nodes
+a satellite runs through 0.2 rad at most."""
 
 
 @dataclass(frozen=True)
@@ -49,6 +53,15 @@ class Surroundings(NamedTuple):
     """(k, 3) geocentric Sun [m]."""
     moon: np.ndarray | None
     """(k, 3) geocentric Moon [m]."""
+    bulge: np.ndarray | None
+    """(k, 3) unit vectors to the day bulge of the atmosphere; None without drag."""
+    spin: np.ndarray | None
+    """(k, 3, 3) matrices that turn a position into the velocity of the air there [1/s]; None without drag."""
+
+    @property
+    def pole(self) -> np.ndarray:
+        """Return unit vectors along the Earth's axis, (k, 3)."""
+        return np.array([[0.0, 0.0, 1.0]]) if self.rotation is None else self.rotation[:, :, 2]
 
 
 class NodeForces(NamedTuple):
@@ -92,7 +105,13 @@ class ForceModel:
         """Return rotation, Sun and Moon at node times (k,)."""
         rotation = None if self._frame is None else self._frame.rotation(times_s)
         sun, moon = (None, None) if self._bodies is None else self._bodies.positions(times_s)
-        return Surroundings(rotation, sun, moon)
+        around = Surroundings(rotation, sun, moon, None, None)
+        if not self.forces.drag:
+            return around
+        x, y, z = np.broadcast_to(OMEGA_EARTH_RAD_S * around.pole, (times_s.size, 3)).T
+        zero = np.zeros(times_s.size)
+        spin = np.array([[zero, -z, y], [z, zero, -x], [-y, x, zero]]).transpose(2, 0, 1)
+        return around._replace(bulge=bulge_direction(sun), spin=np.ascontiguousarray(spin))
 
     def at_nodes(
         self,
@@ -155,11 +174,15 @@ class ForceModel:
         the polynomial of equal moments, so that the velocity and the position it leaves at a cell's end are right.
         """
         full = radiation_acceleration(position, around.sun, self.forces.radiation_reference_m_s2)
-        count = grid.nodes.size
-        fine_position = grid.to_fine @ position.reshape(-1, count, 3)
-        fine_sun = grid.to_fine @ around.sun.reshape(-1, count, 3)
-        lit = lit_fraction(fine_position, fine_sun)
-        return full * (lit @ grid.from_fine.T).reshape(-1, 1)
+        shape = (-1, grid.nodes.size)
+        angle = limb_angle(position, around.sun)[0].reshape(shape)
+        lit = np.where(angle > 0.0, 1.0, 0.0)
+        crossing = np.flatnonzero((angle.min(axis=1) < _CLEAR_RAD) & (angle.max(axis=1) > -_CLEAR_RAD))
+        if crossing.size:
+            fine_position = grid.to_fine @ position.reshape(*shape, 3)[crossing]
+            fine_sun = grid.to_fine @ around.sun.reshape(*shape, 3)[crossing]
+            lit[crossing] = lit_fraction(fine_position, fine_sun) @ grid.from_fine.T
+        return full * lit.reshape(-1, 1)
 
     def _drag(
         self, around: Surroundings, position: np.ndarray, velocity: np.ndarray
@@ -169,30 +192,25 @@ class ForceModel:
         The air turns with the Earth (winds: 5 % of drag). Height is above the ellipsoid to first order in the
         flattening, within 50 m, 0.1 % of the density.
         """
-        if around.rotation is None:
-            pole = np.broadcast_to(np.array([0.0, 0.0, 1.0]), position.shape)
-        else:
-            pole = around.rotation[:, :, 2]
+        pole, bulge = around.pole, around.bulge
         radius = np.sqrt(np.einsum("ki,ki->k", position, position))[:, None]
         unit = position / radius
-        sine = np.einsum("ki,ki->k", unit, pole)[:, None]
+        sine = np.sum(unit * pole, axis=1, keepdims=True)
         height = radius - EGM2008_RADIUS_M * (1.0 - WGS84_F * sine**2)
-        bulge = bulge_direction(around.sun)
         cosine = np.einsum("ki,ki->k", unit, bulge)[:, None]
         rho, per_height, per_cosine = (
             x[:, None] for x in density(height[:, 0], cosine[:, 0], self.forces.bulge_exponent_1)
         )
         vertical = unit + (2.0 * EGM2008_RADIUS_M * WGS84_F) * sine / radius * (pole - sine * unit)
         rho_gradient = per_height * vertical + per_cosine * (bulge - cosine * unit) / radius
-        relative = velocity - OMEGA_EARTH_RAD_S * np.cross(pole, position)
+        relative = velocity - np.matmul(around.spin, position[:, :, None])[:, :, 0]
         speed = np.sqrt(np.einsum("ki,ki->k", relative, relative))[:, None]
         shape = (-0.5 * self.forces.drag_area_m2_kg) * speed * relative
         outer = relative[:, :, None] * relative[:, None, :] / speed[:, :, None]
         outer[:, [0, 1, 2], [0, 1, 2]] += speed
         per_velocity = (-0.5 * self.forces.drag_area_m2_kg) * rho[:, :, None] * outer
-        # d relative / d position = -omega [pole x]; a row vector times [pole x] is the row crossed with the pole.
-        turning = -OMEGA_EARTH_RAD_S * np.cross(per_velocity, pole[:, None, :])
-        return rho * shape, shape[:, :, None] * rho_gradient[:, None, :] + turning, per_velocity
+        per_position = shape[:, :, None] * rho_gradient[:, None, :] - np.matmul(per_velocity, around.spin)
+        return rho * shape, per_position, per_velocity
 
 
 def schwarzschild_acceleration(position: np.ndarray, velocity: np.ndarray) -> np.ndarray:

@@ -14,11 +14,8 @@ SHADOW_RADIUS_M = 6378137.0
 the atmosphere by some 20 km: up to 5 s of a LEO pass through the edge, 5e-7 m/s for the nominal acceleration."""
 
 
-def lit_fraction(position: np.ndarray, sun: np.ndarray) -> np.ndarray:
-    """Return the part of the Sun's disc that is seen, 0 to 1.
-
-    The Earth's limb is taken as straight where it crosses the Sun's disc: exact at both ends of the penumbra, wrong by
-    up to 1.5 % of the disc inside it at geostationary height, 0.1 % in LEO.
+def limb_angle(position: np.ndarray, sun: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
+    """Return the angle from the Earth's limb up to the Sun's centre [rad], and the Sun's radius [rad].
 
     Parameters
     ----------
@@ -30,8 +27,22 @@ def lit_fraction(position: np.ndarray, sun: np.ndarray) -> np.ndarray:
     radius = np.sqrt(np.einsum("...i,...i->...", position, position))
     cosine = -np.einsum("...i,...i->...", position, to_sun) / (radius * distance)
     separation = np.arccos(np.clip(cosine, -1.0, 1.0))
-    earth = np.arcsin(np.minimum(SHADOW_RADIUS_M / radius, 1.0))
-    x = np.clip((separation - earth) * (distance / SUN_RADIUS_M), -1.0, 1.0)
+    return separation - np.arcsin(np.minimum(SHADOW_RADIUS_M / radius, 1.0)), SUN_RADIUS_M / distance
+
+
+def lit_fraction(position: np.ndarray, sun: np.ndarray) -> np.ndarray:
+    """Return the part of the Sun's disc that is seen, 0 to 1.
+
+    The Earth's limb is taken as straight where it crosses the Sun's disc: exact at both ends of the penumbra, wrong by
+    up to 1.5 % of the disc inside it at geostationary height, 0.1 % in LEO.
+
+    Parameters
+    ----------
+    position, sun : ndarray (..., 3)
+        Satellite and Sun, geocentric [m].
+    """
+    angle, sun_radius = limb_angle(position, sun)
+    x = np.clip(angle / sun_radius, -1.0, 1.0)
     return 1.0 - (np.arccos(x) - x * np.sqrt(1.0 - x * x)) / np.pi
 
 
