@@ -3,6 +3,7 @@
 import numpy as np
 import pytest
 
+from shiftfix.physics.motion.bodies import SunMoon
 from shiftfix.physics.motion.orbit import Forces, OrbitMotion
 
 GM, RADIUS, J2 = 3.986004415e14, 6378136.3, 1.0826261739e-3
@@ -171,3 +172,26 @@ def test_refusals(orbits, spin_frame, epoch_tai_ns):
         OrbitMotion(epoch_tai_ns, (0.0, 1.0), None, Forces())
     with pytest.raises(ValueError, match="span"):
         OrbitMotion(epoch_tai_ns, (1.0, 0.0), spin_frame)
+
+
+def test_no_shadow_is_overlooked_between_nodes(spin_frame, epoch_tai_ns, monkeypatch):
+    """Cells far from the shadow skip the fine grid; orbits that graze the shadow come out as with it everywhere."""
+    sun = SunMoon(epoch_tai_ns, (0.0, 6000.0)).positions(np.array([3000.0]))[0][0]
+    sun /= np.linalg.norm(sun)
+    aside = np.cross(sun, [0.0, 0.0, 1.0])
+    aside /= np.linalg.norm(aside)
+    radius = 7.0e6
+    motion = OrbitMotion(epoch_tai_ns, (0.0, 6000.0), spin_frame, Forces(drag=False))
+    moved = []
+    for elevation in np.arcsin(6_378_137.0 / radius) - np.linspace(-0.003, 0.03, 12):
+        normal = np.sin(elevation) * sun + np.cos(elevation) * aside
+        along = np.cross(normal, [0.3, -0.2, 0.9])
+        along /= np.linalg.norm(along)
+        orbit = np.append(radius * along, np.sqrt(GM / radius) * np.cross(normal, along))
+        monkeypatch.undo()
+        skipped = motion.at(orbit).states([6000.0]).position
+        monkeypatch.setattr("shiftfix.physics.motion.forces._CLEAR_RAD", 4.0)
+        assert np.abs(motion.at(orbit).states([6000.0]).position - skipped).max() < 1e-6
+        monkeypatch.setattr("shiftfix.physics.motion.forces._CLEAR_RAD", -1.0)
+        moved.append(np.abs(motion.at(orbit).states([6000.0]).position - skipped).max())
+    assert max(moved) > 1e-3  # the scene has shadows that the nodes alone treat wrongly
