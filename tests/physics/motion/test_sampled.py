@@ -89,6 +89,19 @@ def test_ship_track(degree, with_velocity, bound_m, spin_frame):
     assert d_velocity < 0.1 * bound_m
 
 
+def test_samples_far_from_the_arc_are_left_away(navigation_orbit, spin_frame):
+    nodes = np.arange(0.0, 43201.0, 900.0)
+    position, _ = to_fixed(spin_frame, nodes, navigation_orbit.states(nodes))
+    short = type(spin_frame)((20000.0, 22000.0))
+    path = SampledPath(nodes, position, None, short)
+    whole = SampledPath(nodes, position, None, spin_frame)
+    times = np.linspace(20000.0, 22000.0, 41)
+    assert path.span_s == (13500.0, 28800.0)
+    assert np.abs(path.states(times).position - whole.states(times).position).max() < 1e-6
+    with pytest.raises(ValueError, match="near the arc"):
+        SampledPath(nodes, position, None, type(spin_frame)((90000.0, 92000.0)))
+
+
 def test_nothing_is_interpolated_across_segments(low_orbit):
     nodes = np.arange(0.0, 3001.0, 60.0)
     position = low_orbit.states(nodes).position

@@ -31,7 +31,8 @@ class SampledPath:
     velocity : ndarray (n, 3) or None
         Time derivative of `position` in its own frame [m/s]; used as further data (Hermite interpolation).
     frame : EarthFrame or None
-        Earth rotation over the samples; None for samples in GCRS.
+        Earth rotation over the arc; None for samples in GCRS. Samples further outside its span than eight of their
+        steps are left away.
     segment : ndarray (n,) of int, optional
         Number of the unbroken stretch each sample belongs to; nothing is interpolated across stretches.
     degree : int, optional
@@ -73,6 +74,15 @@ class SampledPath:
             raise ValueError(f"{name}: found {times_s.size} samples; allowed: at least two")
         if not (np.isfinite(times_s).all() and np.isfinite(position).all()):
             raise ValueError(f"{name}: samples that are not finite")
+        if frame is not None:
+            near = _near_span(times_s, frame.span_s)
+            times_s, position, segment = times_s[near], position[near], segment[near]
+            velocity = None if velocity is None else velocity[near]
+            if times_s.size < 2:
+                raise ValueError(
+                    f"{name}: found {times_s.size} samples near the arc; allowed: at least two around "
+                    f"{frame.span_s[0]:.3f} .. {frame.span_s[1]:.3f} s past its epoch"
+                )
         same = segment[1:] == segment[:-1]
         if np.any(same & (np.diff(times_s) <= 0.0)):
             raise ValueError(f"{name}: sample times are not ascending within a segment")
@@ -167,6 +177,13 @@ class SampledPath:
         """Return empty arrays (n, 3, 0): the path has no parameters."""
         empty = np.zeros((np.size(times_s), 3, 0))
         return empty, empty
+
+
+def _near_span(times_s: np.ndarray, span_s: tuple[float, float]) -> np.ndarray:
+    """Return which samples lie in the span or within eight usual steps of it."""
+    steps = np.diff(times_s)
+    margin = 8.0 * float(np.median(steps[steps > 0.0])) if np.any(steps > 0.0) else 0.0
+    return (times_s >= span_s[0] - margin) & (times_s <= span_s[1] + margin)
 
 
 def _window(degree: int | None, slow: bool, with_velocity: bool) -> int:
