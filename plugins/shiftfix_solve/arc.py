@@ -3,12 +3,11 @@
 from __future__ import annotations
 
 import difflib
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 
 from shiftfix.api import (
-    CoverageError,
     EarthFrame,
     FrequencyTable,
     InputError,
@@ -17,12 +16,13 @@ from shiftfix.api import (
     OffsetTable,
     Problem,
     Receiver,
-    SampledPath,
     StationTable,
     bundled_earth_orientation,
-    ground_receiver,
+    earth_frame,
     merge_frequency_tables,
     observations,
+    station_entries,
+    station_receiver,
     utc_text,
 )
 
@@ -93,15 +93,19 @@ def build_arc(
     times = table.array("time_tai_ns")
     station_ids = table.array("station_id").astype(str)
     names = tuple(dict.fromkeys(sorted(station_ids)))
-    entries = _entries(stations, names, station_ids, times, table)
+    source, line = table.array("source"), table.array("row_number")
+    entries = station_entries(stations, names, station_ids, times, lambda i: f"{source[i]}:{line[i]}")
     if epoch_tai_ns is None:
         second = 1_000_000_000
         epoch_tai_ns = int((int(times.min()) + int(times.max())) // 2 // second * second)
     relative = (times - epoch_tai_ns) * 1e-9
     half = 0.5 * table.array("interval_s")
     span = (float((relative - half).min()) - LIGHT_TIME_MARGIN_S - 1.0, float((relative + half).max()) + 2.0)
-    frame, notes = _earth_frame(epoch_tai_ns, span, orientation, earth_orientation)
-    receivers = tuple(_receiver(stations, entries[name], name, frame, epoch_tai_ns) for name in names)
+    degraded = earth_orientation == "degraded"
+    frame, notes = earth_frame(epoch_tai_ns, span, orientation or bundled_earth_orientation(), degraded)
+    receivers = tuple(station_receiver(stations, entries[name], frame, epoch_tai_ns) for name in names)
+    if offsets is not None:
+        receivers = tuple(_calibrated(r, offsets) for r in receivers)
     station = np.array([names.index(s) for s in station_ids], dtype=np.int64)
     correction = _calibration(table, offsets, station, receivers, excluded)
     sigma = _relative_noise(table, correction)
@@ -153,102 +157,11 @@ def _one_emitter(table: FrequencyTable, emitter: str) -> FrequencyTable:
     return table
 
 
-def _entries(stations: StationTable, names, station_ids, times, table) -> dict[str, int]:
-    known = stations.array("station_id").astype(str)
-    problems, entries = [], {}
-    for name in names:
-        rows = np.flatnonzero(known == name)
-        if not rows.size:
-            close = difflib.get_close_matches(name, known, 1)
-            first = int(np.flatnonzero(station_ids == name)[0])
-            where = f"{table.array('source')[first]}:{table.array('row_number')[first]}"
-            problems.append(
-                Problem(
-                    where, f"station {name!r} is not in the station book", allowed=", ".join(known),
-                    remedy=f"did you mean {close[0]}?" if close else "add it to the station book",
-                )
-            )
-            continue
-        mine = times[station_ids == name]
-        valid = [
-            r for r in rows
-            if stations.array("valid_from_tai_ns")[r] <= mine.min() and mine.max() <= stations.array("valid_until_tai_ns")[r]
-        ]
-        if not valid:
-            problems.append(
-                Problem(
-                    f"station {name}", "no entry of the station book is valid over the whole arc",
-                    found=f"{utc_text(int(mine.min()))} to {utc_text(int(mine.max()))}",
-                    remedy="split the arc where the station changed, or extend valid_from / valid_until",
-                )
-            )
-            continue
-        entries[name] = int(valid[0])
-    if problems:
-        raise InputError(problems)
-    return entries
-
-
-def _earth_frame(epoch_tai_ns: int, span, orientation, mode: str) -> tuple[EarthFrame, list[str]]:
-    if mode == "degraded":
-        frame = EarthFrame.without_orientation(epoch_tai_ns, span)
-        return frame, [
-            f"no Earth orientation is used: UT1 = UTC (within 0.9 s) and no polar motion; positions are uncertain by up to "
-            f"{frame.bound_m:.0f} m in longitude, which the error includes"
-        ]
-    table = orientation or bundled_earth_orientation()
-    try:
-        frame = EarthFrame.from_orientation(
-            epoch_tai_ns, span, *(table.array(c) for c in (
-                "mjd_utc_1", "ut1_minus_tai_s", "xp_rad", "yp_rad", "dx_rad", "dy_rad"
-            ))
-        )
-    except ValueError as error:
-        raise CoverageError(
-            Problem(
-                f"Earth orientation ({table.name})", "the arc lies outside the table", found=str(error).replace("\n", "; "),
-                remedy="give a newer table, or earth_orientation = \"degraded\" for a wider error",
-            )
-        ) from error
-    return frame, []
-
-
-def _receiver(stations: StationTable, row: int, name: str, frame: EarthFrame, epoch_tai_ns: int) -> Receiver:
-    value = lambda column: float(stations.array(column)[row])  # noqa: E731
-    finite = lambda x: x if np.isfinite(x) else float("inf")  # noqa: E731
-    priors = dict(
-        offset=value("offset_1"),
-        offset_sigma=finite(value("offset_sigma_1")),
-        drift_per_s=value("drift_1_s"),
-        drift_sigma_per_s=value("drift_sigma_1_s"),
-        time_bias_s=value("time_bias_s"),
-        time_sigma_s=value("time_sigma_s"),
-        position_sigma_m=value("position_sigma_m"),
-    )
-    if name in stations.ephemerides:
-        ephemeris = stations.ephemerides[name]
-        path = sampled_path(ephemeris, name, frame, epoch_tai_ns)
-        return Receiver(name, path, moving=True, **priors)
-    position = np.array([value("x_m"), value("y_m"), value("z_m")])
-    velocity = np.array([value("vx_m_s"), value("vy_m_s"), value("vz_m_s")])
-    position = position + velocity * (epoch_tai_ns - int(stations.array("position_epoch_tai_ns")[row])) * 1e-9
-    return ground_receiver(name, frame, position, velocity, **priors)
-
-
-def sampled_path(ephemeris, name: str, frame: EarthFrame, epoch_tai_ns: int) -> SampledPath:
-    """Return the interpolated path of one object of an ephemeris, times in seconds past the epoch."""
-    mine = ephemeris.rows[ephemeris.array("object_id") == name] if name in set(ephemeris.array("object_id")) else ephemeris.rows
-    times = (mine["time_tai_ns"].to_numpy() - epoch_tai_ns) * 1e-9
-    position = mine[["x_m", "y_m", "z_m"]].to_numpy()
-    velocity = mine[["vx_m_s", "vy_m_s", "vz_m_s"]].to_numpy()
-    return SampledPath(
-        times,
-        position,
-        velocity if np.isfinite(velocity).all() else None,
-        frame if ephemeris.frame == "ITRS" else None,
-        segment=mine["segment_1"].to_numpy(),
-        name=name,
-    )
+def _calibrated(receiver: Receiver, offsets: OffsetTable) -> Receiver:
+    """Return a receiver whose prior is what the calibration left uncertain for all its rows alike."""
+    mine = offsets.array("station_id").astype(str) == receiver.station_id
+    common = float(np.median(offsets.array("common_sigma_1")[mine])) if mine.any() else float("inf")
+    return replace(receiver, offset=0.0, offset_sigma=common, drift_per_s=0.0, drift_sigma_per_s=0.0)
 
 
 def _calibration(table, offsets, station, receivers, excluded) -> dict[str, np.ndarray]:

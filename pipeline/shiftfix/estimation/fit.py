@@ -275,7 +275,7 @@ def _result(
         directions=directions,
         condition=condition,
         # 1e-10 of the largest: below it the direction is lost in the rounding of the partial derivatives.
-        rank_full=bool(singular.size == p and singular.min(initial=0.0) > 1e-10 * singular.max(initial=1.0)),
+        rank_full=bool(singular.size == p and singular.min(initial=np.inf) > 1e-10 * singular.max(initial=1.0)),
         converged=minimum.converged,
         iterations=iterations,
     )
