@@ -65,6 +65,7 @@ _EXPORTS: dict[str, str] = {
     "LocatedDocument": "shiftfix.tables.located_toml",
     "TomlSyntaxError": "shiftfix.tables.located_toml",
     "cautions_for": "shiftfix.tables.cautions",
+    "parse_located_toml": "shiftfix.tables.located_toml",
     "parse_quantity": "shiftfix.tables.quantities",
     "read_located_toml": "shiftfix.tables.located_toml",
     "solution_document": "shiftfix.tables.solution_document",

@@ -1,10 +1,10 @@
-"""Entry point `ingest`: the readers of this plugin; each is imported when its node runs or is asked to recognise a file."""
+"""Entry point `ingest`: the readers of this plugin; each is imported when its node runs or recognises a file."""
 
 from __future__ import annotations
 
 from importlib import import_module
 
-from shiftfix.api import Ephemeris, NodeSpec, Port, hookimpl
+from shiftfix.api import Ephemeris, FrequencyTable, NodeSpec, Port, hookimpl
 
 _EPHEMERIS = {"ephemeris": Port(Ephemeris, "sampled states")}
 
@@ -17,6 +17,21 @@ def _later(module: str, name: str):
 
     function.__name__ = name
     return function
+
+
+def _receiver_readers() -> tuple[NodeSpec, ...]:
+    from shiftfix_ingest.rinex import RinexParams
+
+    return (
+        NodeSpec(
+            name="rinex",
+            summary="received frequencies from RINEX observation files: differenced carrier phase or Doppler",
+            function=_later("rinex", "read_rinex"),
+            outputs={"frequencies": Port(FrequencyTable, "received frequencies of all stations and satellites")},
+            params=RinexParams,
+            recognise=_later("rinex", "recognise"),
+        ),
+    )
 
 
 def _precise_orbit_readers() -> tuple[NodeSpec, ...]:
@@ -34,7 +49,37 @@ def _precise_orbit_readers() -> tuple[NodeSpec, ...]:
     )
 
 
+def _book_and_text_readers() -> tuple[NodeSpec, ...]:
+    from shiftfix_ingest.delimited_params import DelimitedParams
+    from shiftfix_ingest.stations import BookParams
+
+    return (
+        NodeSpec(
+            name="stations",
+            summary="station book: positions, oscillators and clocks with their errors",
+            function=_later("stations", "read_stations"),
+            inputs={"ephemeris": Port(Ephemeris, "tracks of moving stations", optional=True, many=True)},
+            outputs={"stations": Port(StationTable, "stations")},
+            params=BookParams,
+        ),
+        NodeSpec(
+            name="emitters",
+            summary="book of known emitters: rest frequency and place",
+            function=_later("stations", "read_emitters"),
+            outputs={"emitters": Port(EmitterTable, "known emitters")},
+            params=BookParams,
+        ),
+        NodeSpec(
+            name="delimited",
+            summary="delimited text with declared columns, units and time scale",
+            function=_later("delimited", "read_delimited"),
+            outputs={"frequencies": Port(FrequencyTable, "received frequencies")},
+            params=DelimitedParams,
+        ),
+    )
+
+
 @hookimpl
 def shiftfix_nodes():
     """Return the readers of this plugin."""
-    return (*_precise_orbit_readers(),)
+    return (*_receiver_readers(), *_precise_orbit_readers())
