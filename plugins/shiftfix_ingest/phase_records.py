@@ -32,7 +32,7 @@ MILLISECOND_M = SPEED_OF_LIGHT_M_S * 1e-3
 _SAME_JUMP_M = 2e3  # satellites share a reset to this: 30 s times the change of range rate between neighbours
 _CODE_SLIP_M = 4.0
 _BAND_SLIP_M = 0.04
-_TIMES_NOISE = 8.0
+_TIMES_NOISE = 6.0
 _MAX_GAP = 1.5  # of the recording interval
 
 
@@ -140,30 +140,35 @@ def phase_arcs(grid: PhaseGrid, usable: np.ndarray) -> tuple[np.ndarray, np.ndar
 
 
 def code_slips(grid: PhaseGrid, usual: np.ndarray) -> np.ndarray:
-    """Return where phase minus code jumps since the epoch before: by 4 m and 8 times the noise of that satellite."""
+    """Return where phase minus code jumps to another level since the epoch before.
+
+    The step must exceed 4 m and 6 times the noise of the ten steps about it, and so must, but for a quarter, the
+    difference of the medians of three epochs before and after: a single wrong code range is not a slip.
+    """
     out = np.zeros(usual.shape, bool)
     for phase, code in zip(grid.phase_m, grid.code_m, strict=True):
         step = np.where(usual[1:], np.diff(phase - code, axis=0), np.nan)
-        limit = np.maximum(_CODE_SLIP_M, _TIMES_NOISE * _spread(step))
+        before = [_shifted(step, -1), _shifted(step, -2)]
+        after = [_shifted(step, 1), _shifted(step, 2)]
+        zero = np.zeros_like(step)
+        level = step + _median(np.stack([zero, after[0], after[0] + after[1]]), 0)
+        level -= _median(np.stack([zero, -before[0], -before[0] - before[1]]), 0)
+        noise = 1.4826 * np.nan_to_num(_median(np.abs(_window(step, 5)), 0))
+        limit = np.maximum(_CODE_SLIP_M, _TIMES_NOISE * noise)
         with np.errstate(invalid="ignore"):
-            jump = np.abs(step) > limit
-            # A wrong code range at one epoch jumps there and back; the phase is whole.
-            back = np.vstack([np.abs(step[:-1] + step[1:]) < 0.3 * np.abs(step[:-1]), np.zeros((1, step.shape[1]), bool)])
-            fro = np.vstack([np.zeros((1, step.shape[1]), bool), back[:-1]])
-        out[1:] |= jump & ~back & ~fro
+            out[1:] |= (np.abs(step) > limit) & (np.abs(level) > 0.75 * limit)
     return out
 
 
 def band_slips(grid: PhaseGrid, usual: np.ndarray) -> np.ndarray:
-    """Return where L1 - L2 jumps against the neighbouring steps: by 4 cm and 8 times the noise of that satellite."""
+    """Return where L1 - L2 jumps against the neighbouring steps: by 4 cm and 6 times the noise of the steps about it."""
     step_s, _ = _steps(grid)
-    step = np.where(usual[1:], np.diff(grid.phase_m[0] - grid.phase_m[1], axis=0), np.nan)
-    rate = step / step_s[:, None]
-    off = np.where(np.isfinite(_neighbours(rate)), (rate - _neighbours(rate)) * step_s[:, None], np.nan)
-    limit = np.maximum(_BAND_SLIP_M, _TIMES_NOISE * _spread(off))
+    rate = np.where(usual[1:], np.diff(grid.phase_m[0] - grid.phase_m[1], axis=0), np.nan) / step_s[:, None]
+    off = (rate - _neighbours(rate)) * step_s[:, None]
+    noise = 1.4826 * np.nan_to_num(_median(np.abs(_window(off, 5)), 0))
     out = np.zeros(usual.shape, bool)
     with np.errstate(invalid="ignore"):
-        out[1:] = np.abs(off) > limit
+        out[1:] = np.abs(off) > np.maximum(_BAND_SLIP_M, _TIMES_NOISE * noise)
     return out
 
 
@@ -175,15 +180,21 @@ def _steps(grid: PhaseGrid) -> tuple[np.ndarray, np.ndarray]:
 
 def _neighbours(rate: np.ndarray) -> np.ndarray:
     """Return the median of the two steps before and the two after each step."""
-    empty = np.full((2, rate.shape[1]), np.nan)
-    padded = np.vstack([empty, rate, empty])
-    n = len(rate)
-    return _median(np.stack([padded[k : k + n] for k in (0, 1, 3, 4)]), 0)
+    return _median(_window(rate, 2), 0)
 
 
-def _spread(values: np.ndarray) -> np.ndarray:
-    """Return the robust standard deviation of each column (1.4826 times the median absolute value)."""
-    return 1.4826 * np.nan_to_num(_median(np.abs(values), 0))
+def _window(values: np.ndarray, reach: int) -> np.ndarray:
+    """Return the neighbours of each row, `reach` before and after it, without itself, along a new first axis."""
+    return np.stack([_shifted(values, k) for k in range(-reach, reach + 1) if k])
+
+
+def _shifted(values: np.ndarray, by: int) -> np.ndarray:
+    """Return the rows `by` later, NaN past the ends."""
+    out = np.full_like(values, np.nan)
+    n = len(values)
+    if abs(by) < n:
+        out[max(-by, 0) : n - max(by, 0)] = values[max(by, 0) : n + min(by, 0)]
+    return out
 
 
 def _median(values: np.ndarray, axis: int) -> np.ndarray:

@@ -22,6 +22,8 @@ class StationTable(Table):
     ----------
     ephemerides : mapping of station_id to Ephemeris
         Motion of moving stations.
+    sources : tuple
+        Files read, as in FrequencyTable.
     """
 
     columns: ClassVar[tuple[Column, ...]] = (
@@ -46,3 +48,4 @@ class StationTable(Table):
         Column("valid_until_tai_ns", "int", "last time of validity", default=2**62),
     )
     ephemerides: Mapping[str, Ephemeris] = field(default_factory=dict)
+    sources: tuple = ()
