@@ -82,4 +82,6 @@ def _book_and_text_readers() -> tuple[NodeSpec, ...]:
 @hookimpl
 def shiftfix_nodes():
     """Return the readers of this plugin."""
-    return (*_receiver_readers(), *_precise_orbit_readers())
+    from shiftfix_ingest.text_nodes import text_nodes
+
+    return (*text_nodes(), *_receiver_readers(), *_precise_orbit_readers())
