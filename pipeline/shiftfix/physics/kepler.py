@@ -37,7 +37,14 @@ def propagate(
     alpha = 2.0 / r0 - np.einsum("...i,...i->...", velocity, velocity) / gm
     r0, sigma, alpha, t = (np.broadcast_to(a, shape) for a in (r0, sigma, alpha, times))
     # Start: mean motion for ellipses (whole turns included), the rectilinear guess otherwise.
-    chi = np.where(np.abs(alpha) * r0 > 1e-6, root * np.abs(alpha) * t, root * t / r0)
+    chi = np.where(alpha * r0 > 1e-6, root * np.abs(alpha) * t, root * t / r0)
+    # Far out on a hyperbola the anomaly grows with the logarithm of time (Vallado, algorithm 8; from memory).
+    open_axis = np.sqrt(1.0 / np.where(alpha < 0.0, -alpha, 1.0))
+    sign = np.where(t < 0.0, -1.0, 1.0)
+    below = sigma * root + sign * root * open_axis * (1.0 - r0 * alpha)
+    ratio = -2.0 * gm * alpha * t / np.where(below == 0.0, 1.0, below)
+    far = sign * open_axis * np.log(np.maximum(ratio, 1.0))
+    chi = np.where((alpha * r0 < -1e-6) & (ratio > 3.0) & (np.abs(far) < np.abs(chi)), far, chi)
     bound = 10.0 / np.sqrt(np.maximum(np.abs(alpha), 1e-300))
     for _ in range(40):
         square = chi * chi

@@ -76,8 +76,8 @@ def density(
 ) -> tuple[np.ndarray, np.ndarray, np.ndarray]:
     """Return the density and its derivatives along the vertical and with the cosine of the bulge angle.
 
-    The tabled densities are interpolated exponentially in height; the first interval is continued down to 80 km, and
-    the density is constant below that, where nothing orbits.
+    The tabled densities are interpolated exponentially in height; below 100 km, where nothing orbits, the density stays
+    that of 100 km.
 
     Parameters
     ----------
@@ -93,7 +93,7 @@ def density(
     density, per_height, per_cosine : ndarray (k,)
         [kg/m3], [kg/m4], [kg/m3].
     """
-    height = np.maximum(height_m, 8.0e4)
+    height = np.maximum(height_m, _HEIGHT_M[0])
     interval = np.clip(np.searchsorted(_HEIGHT_M, height, side="right") - 1, 0, _HEIGHT_M.size - 2)
     slope = _SLOPE_1_M[:, interval]
     night, day = np.exp(_LOG_DENSITY[:, interval] + slope * (height - _HEIGHT_M[interval]))
@@ -103,7 +103,7 @@ def density(
     inside = height_m < TOP_M
     return (
         inside * (night + (day - night) * share),
-        (inside & (height_m > 8.0e4)) * (slope[0] * night * (1.0 - share) + slope[1] * day * share),
+        (inside & (height_m > _HEIGHT_M[0])) * (slope[0] * night * (1.0 - share) + slope[1] * day * share),
         inside * (day - night) * (0.25 * exponent) * power,
     )
 

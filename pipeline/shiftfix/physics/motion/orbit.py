@@ -20,7 +20,7 @@ _CELL_ANGLE_RAD = 2.0 * pi / 5.0
 _STRETCH_ANGLE_RAD = 2.0 * pi * 0.6
 """Mean anomaly solved at once; longer stretches start too far from the two-body orbit."""
 _TRUNCATION_1 = 1e-12
-_MAX_REFINEMENTS = 4
+_MAX_REFINEMENTS = 2
 _MAX_HALVINGS = 10
 _MARGIN_S = 1.0
 """Times up to this far outside the span are accepted: light times, clock corrections."""
@@ -114,9 +114,11 @@ class OrbitMotion:
 
     Notes
     -----
-    Collocation of degree 16 on cells of at most 72 degrees of the orbit; cells are halved until the last coefficients
-    of position are below 1e-12 of the radius. A day of LEO agrees with a high-order integration of the same forces
-    to 1 mm (see the tests). Body positions and Earth rotation at the nodes are kept between calls of `at`.
+    Collocation of degree 16 on cells of at most 72 degrees of the orbit; cells are halved, twice at most, while the
+    last coefficients of position are above 1e-12 of the radius (`OrbitPath.truncation_1` tells what is left: up to
+    1e-7 for orbits that dive into the lower atmosphere, whose tabled density has kinks). A day of LEO agrees with a
+    high-order integration of the same forces to 1 mm (see the tests). Body positions and Earth rotation at the nodes
+    are kept between calls of `at`.
     """
 
     def __init__(
@@ -156,6 +158,8 @@ class OrbitMotion:
         self._model = ForceModel(self.forces, frame, int(epoch_tai_ns), self._reach)
         self._surroundings = {}
 
+    # A wild start may diverge to infinity on the way to its ValueError.
+    @np.errstate(over="ignore", invalid="ignore")
     def at(self, parameters: np.ndarray) -> OrbitPath:
         """Return the integrated orbit.
 
@@ -290,8 +294,10 @@ class OrbitMotion:
 
 
 def _mean_motion(radius: float, speed_square: float) -> float:
-    """Return the mean motion [rad/s]; for an orbit that is not bound that of its semi-axis."""
-    inverse_axis = abs(2.0 / radius - speed_square / EGM2008_GM_M3_S2)
+    """Return the mean motion [rad/s]; of an orbit that is not bound, at most that of a circle at this radius."""
+    inverse_axis = 2.0 / radius - speed_square / EGM2008_GM_M3_S2
+    if inverse_axis < 0.0:
+        inverse_axis = min(-inverse_axis, 1.0 / radius)
     return sqrt(EGM2008_GM_M3_S2 * inverse_axis**3)
 
 
