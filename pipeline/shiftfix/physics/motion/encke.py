@@ -5,8 +5,9 @@ from __future__ import annotations
 import numpy as np
 
 from shiftfix.physics import kepler
+from shiftfix.physics.constants import EARTH_RADIUS_M, GM_EARTH_M3_S2
 from shiftfix.physics.motion.collocation import PiecewiseChebyshev, chebyshev_values, collocation, evaluate
-from shiftfix.physics.motion.harmonics import EGM2008_GM_M3_S2, EGM2008_RADIUS_M, earth_field
+from shiftfix.physics.motion.harmonics import earth_field
 
 _DEGREE = 16
 _CELL_ANGLE_RAD = 1.2
@@ -43,11 +44,11 @@ def propagate_batch(states: np.ndarray, times_s: np.ndarray) -> tuple[np.ndarray
     rate, perigee = _perigee(states)
     needed = np.ceil(np.maximum(*reach) * rate / _CELL_ANGLE_RAD)
     count = 2 ** np.ceil(np.log2(np.maximum(needed, 1.0)))
-    plain = ~((count <= _MAX_CELLS) & (perigee > EGM2008_RADIUS_M))
+    plain = ~((count <= _MAX_CELLS) & (perigee > EARTH_RADIUS_M))
     if plain.any():
         some = states[plain]
         position[plain], velocity[plain] = kepler.propagate(
-            some[:, None, :3], some[:, None, 3:], times_s, EGM2008_GM_M3_S2
+            some[:, None, :3], some[:, None, 3:], times_s, GM_EARTH_M3_S2
         )
     for cells in np.unique(count[~plain]):
         rows = ~plain & (count == cells)
@@ -59,10 +60,10 @@ def _perigee(states: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
     """Return the angular rate at perigee [rad/s] and its radius [m], each (b,)."""
     radius = np.linalg.norm(states[:, :3], axis=1)
     momentum = np.einsum("bi,bi->b", *(2 * [np.cross(states[:, :3], states[:, 3:])]))
-    energy = 0.5 * np.einsum("bi,bi->b", states[:, 3:], states[:, 3:]) - EGM2008_GM_M3_S2 / radius
-    eccentricity = np.sqrt(np.maximum(1.0 + 2.0 * energy * momentum / EGM2008_GM_M3_S2**2, 0.0))
-    perigee = np.maximum(momentum / EGM2008_GM_M3_S2 / (1.0 + eccentricity), 1.0)
-    return np.sqrt(EGM2008_GM_M3_S2 * (1.0 + eccentricity) / perigee**3), perigee
+    energy = 0.5 * np.einsum("bi,bi->b", states[:, 3:], states[:, 3:]) - GM_EARTH_M3_S2 / radius
+    eccentricity = np.sqrt(np.maximum(1.0 + 2.0 * energy * momentum / GM_EARTH_M3_S2**2, 0.0))
+    perigee = np.maximum(momentum / GM_EARTH_M3_S2 / (1.0 + eccentricity), 1.0)
+    return np.sqrt(GM_EARTH_M3_S2 * (1.0 + eccentricity) / perigee**3), perigee
 
 
 def _with_flattening(states, times_s, reach, count) -> tuple[np.ndarray, np.ndarray]:
@@ -74,11 +75,11 @@ def _with_flattening(states, times_s, reach, count) -> tuple[np.ndarray, np.ndar
     start = np.concatenate([step * np.arange(count) for step in steps])
     m = half.size
     node_times = (start[:, None] + half[:, None] * (1.0 + grid.nodes)).ravel()
-    position, velocity = kepler.propagate(states[:, None, :3], states[:, None, 3:], node_times, EGM2008_GM_M3_S2)
+    position, velocity = kepler.propagate(states[:, None, :3], states[:, None, 3:], node_times, GM_EARTH_M3_S2)
     flat = position.reshape(-1, 3)
     acceleration, gradient = earth_field(0, 2).attraction(flat)
     square = np.einsum("ki,ki->k", flat, flat)
-    acceleration = acceleration + (EGM2008_GM_M3_S2 / (square * np.sqrt(square)))[:, None] * flat
+    acceleration = acceleration + (GM_EARTH_M3_S2 / (square * np.sqrt(square)))[:, None] * flat
     acceleration = acceleration.reshape(b, m, n, 3)
     gradient = gradient.reshape(b, m, n, 3, 3)
     position = position.reshape(b, m, n, 3)

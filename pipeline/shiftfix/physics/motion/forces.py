@@ -11,11 +11,19 @@ from typing import NamedTuple
 
 import numpy as np
 
-from shiftfix.physics.constants import GM_MOON_M3_S2, GM_SUN_M3_S2, OMEGA_EARTH_RAD_S, SPEED_OF_LIGHT_M_S, WGS84_F
+from shiftfix.physics.constants import (
+    EARTH_RADIUS_M,
+    GM_EARTH_M3_S2,
+    GM_MOON_M3_S2,
+    GM_SUN_M3_S2,
+    OMEGA_EARTH_RAD_S,
+    SPEED_OF_LIGHT_M_S,
+    WGS84_F,
+)
 from shiftfix.physics.motion.atmosphere import TOP_M, bulge_direction, density
 from shiftfix.physics.motion.bodies import SunMoon, tidal_acceleration
 from shiftfix.physics.motion.collocation import Collocation
-from shiftfix.physics.motion.harmonics import EGM2008_GM_M3_S2, EGM2008_RADIUS_M, earth_field
+from shiftfix.physics.motion.harmonics import earth_field
 from shiftfix.physics.motion.radiation import limb_angle, lit_fraction, radiation_acceleration
 
 _CLEAR_RAD = 0.3
@@ -150,7 +158,7 @@ class ForceModel:
             acceleration = acceleration + radiation_scale_1 * per_radiation
         velocity_gradient = None
         radius_square = np.einsum("ki,ki->k", position, position)
-        if self.forces.drag and radius_square.min() < (EGM2008_RADIUS_M + TOP_M) ** 2:
+        if self.forces.drag and radius_square.min() < (EARTH_RADIUS_M + TOP_M) ** 2:
             per_drag, drag_gradient, velocity_gradient = self._drag(around, position, velocity)
             acceleration = acceleration + drag_scale_1 * per_drag
             gradient = gradient + drag_scale_1 * drag_gradient
@@ -196,12 +204,12 @@ class ForceModel:
         radius = np.sqrt(np.einsum("ki,ki->k", position, position))[:, None]
         unit = position / radius
         sine = np.sum(unit * pole, axis=1, keepdims=True)
-        height = radius - EGM2008_RADIUS_M * (1.0 - WGS84_F * sine**2)
+        height = radius - EARTH_RADIUS_M * (1.0 - WGS84_F * sine**2)
         cosine = np.einsum("ki,ki->k", unit, bulge)[:, None]
         rho, per_height, per_cosine = (
             x[:, None] for x in density(height[:, 0], cosine[:, 0], self.forces.bulge_exponent_1)
         )
-        vertical = unit + (2.0 * EGM2008_RADIUS_M * WGS84_F) * sine / radius * (pole - sine * unit)
+        vertical = unit + (2.0 * EARTH_RADIUS_M * WGS84_F) * sine / radius * (pole - sine * unit)
         rho_gradient = per_height * vertical + per_cosine * (bulge - cosine * unit) / radius
         relative = velocity - np.matmul(around.spin, position[:, :, None])[:, :, 0]
         speed = np.sqrt(np.einsum("ki,ki->k", relative, relative))[:, None]
@@ -220,7 +228,7 @@ def schwarzschild_acceleration(position: np.ndarray, velocity: np.ndarray) -> np
     """
     square = np.einsum("ki,ki->k", position, position)
     radius = np.sqrt(square)
-    along = 4.0 * EGM2008_GM_M3_S2 / radius - np.einsum("ki,ki->k", velocity, velocity)
+    along = 4.0 * GM_EARTH_M3_S2 / radius - np.einsum("ki,ki->k", velocity, velocity)
     mixed = 4.0 * np.einsum("ki,ki->k", position, velocity)
-    factor = EGM2008_GM_M3_S2 / (SPEED_OF_LIGHT_M_S**2 * square * radius)
+    factor = GM_EARTH_M3_S2 / (SPEED_OF_LIGHT_M_S**2 * square * radius)
     return (factor * along)[:, None] * position + (factor * mixed)[:, None] * velocity

@@ -12,10 +12,10 @@ from math import factorial, sqrt
 
 import numpy as np
 
+from shiftfix.physics.constants import EARTH_RADIUS_M, GM_EARTH_M3_S2
+
 # EGM2008 (N. K. Pavlis et al., J. Geophys. Res. 117, 2012, B04406), tide-free, fully normalised: degree, order, C, S.
 # Degrees 2-4 as published in the model's coefficient file; the zonals of degree 5 and 6 are from memory.
-EGM2008_GM_M3_S2 = 3.986004415e14
-EGM2008_RADIUS_M = 6378136.3
 EGM2008_COEFFICIENTS = (
     (2, 0, -4.841651437908150e-04, 0.0),
     (2, 1, -2.066155090741760e-10, 1.384413891379790e-09),
@@ -138,7 +138,7 @@ class EarthField:
         x = np.ascontiguousarray(position.T)
         inverse = 1.0 / np.sqrt(np.einsum("ik,ik->k", x, x))
         unit = x * inverse
-        ratio = EGM2008_RADIUS_M * inverse
+        ratio = EARTH_RADIUS_M * inverse
         s = unit * ratio
         powers = np.empty((self._size, 3, x.shape[1]))
         powers[0] = 1.0
@@ -147,7 +147,7 @@ class EarthField:
         i, j, k = self._exponents
         values = self._table @ (powers[i, 0] * powers[j, 1] * powers[k, 2])
         once, twice, gradient, weighted, second = values[0], values[1], values[2:5], values[5:8], values[8:14]
-        strength = EGM2008_GM_M3_S2 * inverse * inverse
+        strength = GM_EARTH_M3_S2 * inverse * inverse
         acceleration = strength * (ratio * gradient - once * unit)
         strength *= inverse
         mixed = ratio * weighted - (0.5 * twice) * unit

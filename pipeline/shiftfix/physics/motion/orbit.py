@@ -7,10 +7,10 @@ from math import isfinite, pi, sqrt
 import numpy as np
 
 from shiftfix.physics import kepler
+from shiftfix.physics.constants import GM_EARTH_M3_S2
 from shiftfix.physics.motion.collocation import PiecewiseChebyshev, chebyshev_values, collocation, evaluate
 from shiftfix.physics.motion.encke import propagate_batch
 from shiftfix.physics.motion.forces import ForceModel, Forces
-from shiftfix.physics.motion.harmonics import EGM2008_GM_M3_S2
 from shiftfix.physics.motion.shooting import Cells, Stretch, solve
 from shiftfix.physics.motion.states import States
 
@@ -254,16 +254,16 @@ class OrbitMotion:
             ]
         )
         if len(edges) == 1 or np.array_equal(chain_states[0], chain_states[1]):
-            return kepler.propagate(chain_states[0, :3], chain_states[0, 3:], times, EGM2008_GM_M3_S2)
+            return kepler.propagate(chain_states[0, :3], chain_states[0, 3:], times, GM_EARTH_M3_S2)
         counts = [(edge.size - 1) * self._grid.nodes.size for edge in edges]
         states = np.repeat(chain_states, counts, axis=0)
-        return kepler.propagate(states[:, :3], states[:, 3:], times, EGM2008_GM_M3_S2)
+        return kepler.propagate(states[:, :3], states[:, 3:], times, GM_EARTH_M3_S2)
 
     def _fastest(self, guess) -> np.ndarray:
         """Return the largest angular rate [rad/s] in every cell."""
         position, velocity = guess
         square = np.einsum("ki,ki->k", position, position)
-        rate = np.maximum(EGM2008_GM_M3_S2 / np.sqrt(square), np.einsum("ki,ki->k", velocity, velocity)) / square
+        rate = np.maximum(GM_EARTH_M3_S2 / np.sqrt(square), np.einsum("ki,ki->k", velocity, velocity)) / square
         return np.sqrt(rate.reshape(-1, self._grid.nodes.size).max(axis=1))
 
     def _surroundings_of(self, cells: Cells):
@@ -295,10 +295,10 @@ class OrbitMotion:
 
 def _mean_motion(radius: float, speed_square: float) -> float:
     """Return the mean motion [rad/s]; of an orbit that is not bound, at most that of a circle at this radius."""
-    inverse_axis = 2.0 / radius - speed_square / EGM2008_GM_M3_S2
+    inverse_axis = 2.0 / radius - speed_square / GM_EARTH_M3_S2
     if inverse_axis < 0.0:
         inverse_axis = min(-inverse_axis, 1.0 / radius)
-    return sqrt(EGM2008_GM_M3_S2 * inverse_axis**3)
+    return sqrt(GM_EARTH_M3_S2 * inverse_axis**3)
 
 
 def _cells(edges: list[np.ndarray]) -> Cells:

@@ -4,12 +4,12 @@ from __future__ import annotations
 
 import numpy as np
 
-from shiftfix.physics.constants import AU_M
+from shiftfix.physics.constants import AU_M, WGS84_A_M
 
 SUN_RADIUS_M = 6.957e8
 """Nominal solar radius, IAU 2015 resolution B3."""
 
-SHADOW_RADIUS_M = 6378137.0
+SHADOW_RADIUS_M = WGS84_A_M
 """Radius of the Earth that throws the shadow: the equatorial one of WGS84. The flattening moves an edge by up to 21 km,
 the atmosphere by some 20 km: up to 5 s of a LEO pass through the edge, 5e-7 m/s for the nominal acceleration."""
 

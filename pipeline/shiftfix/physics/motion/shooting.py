@@ -12,6 +12,7 @@ from typing import NamedTuple
 
 import numpy as np
 
+from shiftfix.physics.constants import EARTH_RADIUS_M
 from shiftfix.physics.motion.collocation import Collocation
 from shiftfix.physics.motion.forces import ForceModel, Surroundings
 
@@ -20,7 +21,7 @@ _CONVERGED_1 = 1e-7
 """Change of position, relative to the lowest radius, below which Newton's method stops; being quadratic it has then
 converged to 1e-13, and the gradients, taken one step earlier, are good to 1e-7."""
 
-LOWEST_RADIUS_M = 0.5 * 6378136.3
+LOWEST_RADIUS_M = 0.5 * EARTH_RADIUS_M
 """An orbit that comes closer to the Earth's centre is refused: half the Earth's radius."""
 
 

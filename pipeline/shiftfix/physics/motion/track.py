@@ -6,11 +6,11 @@ from typing import NamedTuple
 
 import numpy as np
 
-from shiftfix.physics.constants import WGS84_A_M, WGS84_F
+from shiftfix.physics.constants import WGS84_A_M
+from shiftfix.physics.constants import WGS84_E2 as _E2
 from shiftfix.physics.motion.collocation import chebyshev_values, collocation
 
 _DEGREE = 14
-_E2 = WGS84_F * (2.0 - WGS84_F)
 _PICARD_STEPS = 40
 _LATITUDE_LIMIT_RAD = np.radians(89.9)
 _LONGEST_M = 4.0e5
