@@ -30,7 +30,7 @@ from shiftfix_ingest.phase_records import REASONS, phase_arcs
 from shiftfix_ingest.rinex_grid import StationGrid, station_grid
 from shiftfix_ingest.rinex_signals import BANDS, unknown_signals
 from shiftfix_ingest.rinex_text import ObservationFile, parse_observations
-from shiftfix_ingest.source_files import SourceFile, binary_problem, head_text, open_sources
+from shiftfix_ingest.source_files import SourceFile, binary_problem, head_text, open_sources, repeat_problems
 
 _COMBINED_NOISE = 3.0  # noise of the two-band combination over that of one band: 2.98 for GPS L1/L2
 _SAME_PLACE_M = 1000.0
@@ -42,21 +42,31 @@ class RinexParams:
     """Parameters of `ingest.rinex`."""
 
     files: tuple = param("observation files, RINEX 2 to 4, plain, gzip or Hatanaka-compressed", path="files")
-    stations: Mapping[str, str] = param("station of a file by file name; default: first four letters of MARKER NAME", default={})
+    stations: Mapping[str, str] = param(
+        "station of a file by file name; default: first four letters of MARKER NAME", default={}
+    )
     satellites: tuple[str, ...] = param("satellites to read, as in G17; empty means all of GPS", default=())
     exclude_satellites: tuple[str, ...] = param("satellites to leave out", default=())
     observable: str = param("what gives the frequency", default="phase", choices=("phase", "doppler"))
     combination: str = param(
-        "one band, or the two-band combination without ionosphere", default="single", choices=("single", "ionosphere_free")
+        "one band, or two combined so that the ionosphere cancels", default="single", choices=("single", "ionosphere_free")
     )
     signals: tuple[str, ...] = param("observation codes to prefer, as in L1C, L2W, C2W", default=())
     doppler_sign: str = param("sign of the Doppler in the files", default="rinex", choices=("rinex", "reversed"))
-    phase_sigma: float = param("1-sigma of one phase of one band; tripled for the combination", default=0.003, unit="m", minimum=1e-6)
-    doppler_sigma: float = param("1-sigma of one Doppler of one band; tripled for the combination", default=0.1, unit="Hz", minimum=1e-6)
+    phase_sigma: float = param(
+        "1-sigma of one phase of one band; tripled for the combination", default=0.003, unit="m", minimum=1e-6
+    )
+    doppler_sigma: float = param(
+        "1-sigma of one Doppler of one band; tripled for the combination", default=0.1, unit="Hz", minimum=1e-6
+    )
     interval: float = param("spacing of the epochs to use; 0 s means as recorded", default=0.0, unit="s", minimum=0.0)
-    minimum_cn0: float = param("records with a weaker signal are left out; 0 means none", default=0.0, unit="dBHz", minimum=0.0)
-    start: str = param("UTC from which records are read, as in 2026-03-01T06:00:00Z; empty means all", default="")
-    stop: str = param("UTC until which records are read; empty means all", default="")
+    minimum_cn0: float = param("weaker signals are left out; 0 means none", default=0.0, unit="dBHz", minimum=0.0)
+    start: str = param("UTC from which records are read, as in 2026-03-01T06:00:00Z; empty: all", default="")
+    stop: str = param("UTC until which records are read; empty: all", default="")
+    on_repeat: str = param(
+        "refuse: the same file twice is an error; ignore: it is used once and noted", default="refuse",
+        choices=("refuse", "ignore"),
+    )
 
 
 @dataclass
@@ -86,7 +96,7 @@ def read_rinex(inputs: Any, params: RinexParams, context: Any) -> dict[str, Freq
     """
     sources, problems, notes = open_sources(params.files, context.display_path)
     span, bad = _span(params)
-    problems += bad + _satellite_problems(params)
+    problems += repeat_problems(notes, params.on_repeat) + bad + _satellite_problems(params)
     files: list[ObservationFile] = []
     for source in sources:
         context.check_cancelled()
@@ -267,7 +277,7 @@ def _columns(station: str, grid: StationGrid, params: RinexParams, arc, e, s, b)
     names = np.array(grid.satellites, object)[s]
     if params.observable == "phase":
         length_ns = times[e] - times[b]
-        length_s = length_ns * 1e-9
+        length_s = length_ns / 1e9
         rate = (grid.phase_m[e, s] - grid.phase_m[b, s]) / length_s
         sigma = nominal * np.sqrt(2.0) * params.phase_sigma * more / (SPEED_OF_LIGHT_M_S * length_s)
         arcs = np.array([f"{station}/{n}/{a}" for n, a in zip(names, arc[e, s], strict=True)], object)

@@ -66,7 +66,9 @@ def open_sources(
         try:
             raw = Path(path).read_bytes()
         except FileNotFoundError:
-            problems.append(Problem(name, "no such file", remedy="correct params.files; it is relative to the pipeline file"))
+            problems.append(
+                Problem(name, "no such file", remedy="correct params.files; it is relative to the pipeline file")
+            )
             continue
         except IsADirectoryError:
             problems.append(Problem(name, "is a folder, not a file", remedy=f"name the files in it, as in {name}/*"))
@@ -99,6 +101,19 @@ def open_sources(
                 continue
         files.append(SourceFile(Path(path), name, digest, raw))
     return files, problems, notes
+
+
+def repeat_problems(notes: Iterable[str], on_repeat: str) -> list[Problem]:
+    """Return a problem for each repeated file that `open_sources` noted, unless repeats are to be ignored."""
+    if on_repeat == "ignore":
+        return []
+    return [
+        Problem(
+            note.split(" holds ")[0], "the same file is given twice", found=note,
+            remedy='name it once, or set on_repeat = "ignore"',
+        )
+        for note in notes
+    ]
 
 
 def binary_problem(source: SourceFile, wanted: str) -> Problem | None:

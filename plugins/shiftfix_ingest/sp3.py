@@ -16,7 +16,7 @@ from typing import Any
 import numpy as np
 
 from shiftfix.api import Ephemeris, InputError, Problem, Source, param, tai_ns_from_calendar
-from shiftfix_ingest.source_files import SourceFile, binary_problem, head_text, open_sources
+from shiftfix_ingest.source_files import SourceFile, binary_problem, head_text, open_sources, repeat_problems
 
 _NO_CLOCK_US = 999999.0  # 999999.999999 marks an absent clock; any value at or above this is one
 _SCALES = {"GPS": ("GPS", 0), "GAL": ("GPS", 0), "QZS": ("GPS", 0), "IRN": ("GPS", 0), "UTC": ("UTC", 0),
@@ -31,6 +31,10 @@ class Sp3Params:
     files: tuple = param("SP3 files, plain or gzip, in any order; the last named wins where two disagree", path="files")
     satellites: tuple[str, ...] = param("satellites to read, as in G17; empty means all", default=())
     position_sigma: float = param("1-sigma of each coordinate", default=0.05, unit="m", minimum=0.0)
+    on_repeat: str = param(
+        "refuse: the same file twice is an error; ignore: it is used once and noted", default="refuse",
+        choices=("refuse", "ignore"),
+    )
 
 
 @dataclass
@@ -60,6 +64,7 @@ def read_sp3(inputs: Any, params: Sp3Params, context: Any) -> dict[str, Ephemeri
         Files that are missing, empty, binary, of another kind or truncated, and lines that cannot be read: all at once.
     """
     sources, problems, notes = open_sources(params.files, context.display_path)
+    problems += repeat_problems(notes, params.on_repeat)
     wanted = set(params.satellites)
     found: list[tuple[SourceFile, _Records]] = []
     for source in sources:
@@ -220,7 +225,8 @@ def _whole(source: SourceFile, lines: list[str], epochs: int, ended: bool) -> li
     return [
         Problem(
             f"{source.name}:{len(lines)}", "the file is truncated" if not ended else "number of epochs does not agree",
-            found=f"{epochs} epochs, {'EOF line' if ended else 'no EOF line'}", allowed=f"{announced} epochs and an EOF line",
+            found=f"{epochs} epochs, {'EOF line' if ended else 'no EOF line'}",
+            allowed=f"{announced} epochs and an EOF line",
             remedy="fetch the file again",
         )
     ]
