@@ -32,7 +32,8 @@ C = 299792458.0
 class _Known:
     """One known emitter: path, clock and rest frequency."""
 
-    def __init__(self, name, path, clock, rest_hz=None, rest_sigma_hz=0.0) -> None:
+    def __init__(self, name, path, clock, rest_hz=None, rest_sigma_hz=0.0, span=(-(2**62), 2**62)) -> None:
+        self.span = span
         self.name, self.path, self.clock = name, path, clock
         self.rest_hz, self.rest_sigma_hz = rest_hz, rest_sigma_hz
 
@@ -102,9 +103,10 @@ def _known(inputs, table, params, frame, epoch) -> dict[str, _Known]:
             if clock is None and name not in rest:
                 continue
             path = sampled_path(ephemeris, name, frame, epoch)
+            span = (ephemeris.array("time_tai_ns")[mine].min(), ephemeris.array("time_tai_ns")[mine].max())
             if clock is not None and ephemeris.clock_excludes_periodic_relativity:
                 clock = _with_relativity(clock, path)
-            out[name] = _Known(name, path, clock, *rest.get(name, (None, 0.0)))
+            out[name] = _Known(name, path, clock, *rest.get(name, (None, 0.0)), span=span)
     from shiftfix.api import ground_receiver
 
     for name in sorted(present & set(fixed)):
@@ -148,10 +150,12 @@ def _looks(table, mine, known, receiver, epoch, media, params):
     interval = table.array("interval_s")
     half_ns = np.round(interval * 5e8).astype(np.int64)
     for number, name in enumerate(sorted(known)):
+        one = known[name]
         rows = mine[emitter[mine] == name]
+        # Emission comes up to 0.15 s before reception: the count must begin that long after the first sample.
+        rows = rows[(tags[rows] - half_ns[rows] > one.span[0] + 300_000_000) & (tags[rows] + half_ns[rows] <= one.span[1])]
         if not rows.size:
             continue
-        one = known[name]
         start = np.array([correction(t) for t in tags[rows] - half_ns[rows]])
         stop = np.array([correction(t) for t in tags[rows] + half_ns[rows]])
         reference = float(np.median(table.array("nominal_frequency_hz")[rows]))

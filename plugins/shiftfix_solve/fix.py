@@ -59,10 +59,13 @@ def fix(inputs, params, context):
             vertical_tec=params.vertical_tec_sigma,
             carrier_hz=arc.rows.reference_hz,
             # UT1 - UTC is within 0.9 s and drifts through that range evenly: 0.5 s as 1-sigma.
+            antenna_m=params.emitter_antenna_sigma if bound.frame == "GCRS" else 0.0,
             ut1_s=0.5 if arc.frame.degraded else 0.0,
         ),
         noise=params.noise,
         odds_threshold=params.odds_threshold,
+        elevation_mask_deg=params.elevation_mask,
+        elevation_weighting=params.elevation_weighting == "sine",
     )
     if (arc.rows.station >= 0).all() and clocks.datum != "auto" and clocks.datum not in {r.station_id for r in arc.receivers}:
         raise InputError(

@@ -57,9 +57,18 @@ class FixParams:
     loss: str = param("robust: gates and weights; plain: every row at full weight", default="robust", choices=("robust", "plain"))
     downweight_beyond: float = param("normalised residual beyond which a row loses weight", default=3.0, minimum=1.0, maximum=100.0)
     reject_beyond: float = param("normalised residual beyond which a row is rejected", default=6.0, minimum=2.0, maximum=1000.0)
+    elevation_mask: float = param(
+        "rows of ground stations below this elevation are left out", default=-90.0, unit="deg", minimum=-90.0, maximum=80.0
+    )
+    elevation_weighting: str = param(
+        "none; sine: the 1-sigma of rows of ground stations grows as 1/sin(elevation)", default="none", choices=("none", "sine")
+    )
     troposphere: str = param("none, or the delay of a standard atmosphere", default="standard", choices=("none", "standard"))
     zenith_delay_sigma: float = param("considered error of the zenith delay", default=0.05, unit="m", minimum=0.0)
     vertical_tec_sigma: float = param("considered vertical electron content, in 1e16 per square metre", default=0.0, minimum=0.0)
+    emitter_antenna_sigma: float = param(
+        "considered distance of a satellite's antenna from its centre of mass", default=1.0, unit="m", minimum=0.0
+    )
     common_time_sigma: float = param("considered time-tag error that all stations share", default=0.0, unit="s", minimum=0.0)
     consider_time: bool = param("consider the time-tag sigma of each station", default=True)
     consider_coordinates: bool = param("consider the coordinate sigma of each station", default=True)
@@ -76,7 +85,7 @@ class OrbitOptions:
     """Options of the motion `orbit`."""
 
     radiation_scale_sigma: float = param(
-        "1-sigma of the radiation-pressure scale about 1; 0 keeps the nominal one", default=0.0, minimum=0.0
+        "1-sigma of the radiation-pressure scale about 1 (area and mass are unknown); 0 keeps the nominal one", default=0.5, minimum=0.0
     )
     drag_scale_sigma: float = param("1-sigma of the drag scale about 1; 0 keeps the nominal one", default=0.0, minimum=0.0)
     drag: bool = param("whether air drag acts", default=True)

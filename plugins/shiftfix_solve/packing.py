@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
+
 import numpy as np
 import pandas as pd
 
@@ -23,14 +25,17 @@ def pack(answer, arc, bound, settings, starts, context) -> Solution:
         frame=bound.frame,
         unobservable=answer.unobservable,
         findings=tuple(answer.findings) + tuple(starts.findings),
-        warnings=_warnings(answer, arc),
         cautions=cautions_for(context.emitter_classes),
     )
     if answer.widened is None:
-        return Solution(rows=_untouched(arc), covariance_reason=answer.text, **fields)
+        return Solution(warnings=_warnings(answer, arc), rows=_base(arc), covariance_reason=answer.text, **fields)
     fit = answer.widened.fit
+    if answer.kept is not None:
+        low = {int(i): "below the elevation mask" for i in arc.index[~answer.kept]}
+        arc = replace(arc, index=arc.index[answer.kept], excluded={**arc.excluded, **low})
     delivered = answer.verdict in ("fix", "ambiguous")
     fields |= dict(
+        warnings=_warnings(answer, arc),
         rows=_residuals(arc, fit),
         covariance_kind=answer.widened.kind,
         frequency_datum=fit.nuisance.datum,
@@ -93,10 +98,6 @@ def _base(arc) -> pd.DataFrame:
         flag[i], reason[i] = "reject", why
     rows["flag"], rows["reason"] = flag, reason
     return rows
-
-
-def _untouched(arc) -> pd.DataFrame:
-    return _base(arc)
 
 
 def _residuals(arc, fit) -> pd.DataFrame:

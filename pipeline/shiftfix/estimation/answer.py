@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 
 import numpy as np
 
@@ -40,6 +40,10 @@ class AnswerSettings:
         Other solutions are listed up to this far above the best.
     starts : int
         Largest number of starts that are fitted.
+    elevation_mask_deg : float
+        Rows of ground stations below it, as the best first fit sees them, are left out; -90 keeps all.
+    elevation_weighting : bool
+        Whether the 1-sigma of rows of ground stations grows as 1/sin(elevation): media and multipath (common practice).
     """
 
     fit: FitSettings = field(default_factory=FitSettings)
@@ -48,6 +52,8 @@ class AnswerSettings:
     odds_threshold: float = 0.95
     keep_delta_chi_square: float = 25.0
     starts: int = 16
+    elevation_mask_deg: float = -90.0
+    elevation_weighting: bool = False
 
 
 @dataclass(frozen=True, eq=False)
@@ -72,6 +78,8 @@ class Answer:
     budget : dict
         1-sigma of position [m] and velocity [m/s] by source; squares sum to the total.
     findings : tuple of str
+    kept : ndarray of bool or None
+        Rows of the observations that took part; None means all.
     """
 
     verdict: str
@@ -86,6 +94,7 @@ class Answer:
     parameter_covariance: np.ndarray | None
     budget: dict
     findings: tuple[str, ...]
+    kept: np.ndarray | None = None
 
 
 def solve_arc(
@@ -111,13 +120,18 @@ def solve_arc(
     used_rows = np.unique(rows.station)
     flat = all(not receivers[s].moving for s in used_rows) and bound.frame == "ITRS"
     null_cost = _null_cost(rows, receivers, settings.fit)
-    fits, failures = [], []
-    for start in np.atleast_2d(starts)[: settings.starts]:
-        settings.fit.check_cancelled()
-        try:
-            fits.append(fit_arc(rows, receivers, bound.motion, start, settings.fit, forward=forward))
-        except ValueError as error:
-            failures.append(str(error))
+    fits, failures = _fits(rows, receivers, bound, np.atleast_2d(starts)[: settings.starts], settings, forward)
+    kept = None
+    if fits and (settings.elevation_mask_deg > -90.0 or settings.elevation_weighting):
+        kept, graded = _by_elevation(rows, min(fits, key=lambda f: (not f.converged, f.cost)), settings)
+        if kept.sum() >= max(0.3 * len(rows), 8):
+            again = [f.parameters for f in distinct_fits(fits)]
+            rows = graded.select(kept)
+            forward = ForwardModel(rows, receivers, settings.fit.media)
+            fits, failures = _fits(rows, receivers, bound, np.array(again), settings, forward)
+            null_cost = _null_cost(rows, receivers, settings.fit)
+        else:
+            kept = None
     if not fits:
         reason = failures[0].splitlines()[0] if failures else "the search returned no starting state"
         return _refused("not converged", f"no start could be fitted: {reason}", (), None, ())
@@ -159,8 +173,31 @@ def solve_arc(
     else:
         verdict, text = "fix", "one solution fits"
     return Answer(
-        verdict, text, unseen, widened, others, chances, position, velocity, state_covariance, covariance, budget, findings
+        verdict, text, unseen, widened, others, chances, position, velocity, state_covariance, covariance, budget, findings, kept
     )
+
+
+def _fits(rows, receivers, bound, starts, settings: AnswerSettings, forward: ForwardModel) -> tuple[list[Fit], list[str]]:
+    fits, failures = [], []
+    for start in starts:
+        settings.fit.check_cancelled()
+        try:
+            fits.append(fit_arc(rows, receivers, bound.motion, start, settings.fit, forward=forward))
+        except ValueError as error:
+            failures.append(str(error))
+    return fits, failures
+
+
+def _by_elevation(rows: Observations, fit: Fit, settings: AnswerSettings) -> tuple[np.ndarray, Observations]:
+    """Return the rows above the mask, and the rows with their 1-sigma graded by elevation (ground stations only)."""
+    elevation = fit.forward.elevation_deg(fit.path)
+    ground = np.array([not r.moving for r in fit.forward.receivers])[rows.station]
+    kept = ~ground | (elevation >= settings.elevation_mask_deg)
+    if not settings.elevation_weighting:
+        return kept, rows
+    # Below 3 deg the sine would overstate what is left of the growth.
+    factor = np.where(ground, 1.0 / np.sin(np.radians(np.clip(elevation, 3.0, 90.0))), 1.0)
+    return kept, replace(rows, sigma=rows.sigma * factor)
 
 
 def _refused(verdict: str, text: str, unseen: tuple[str, ...], widened: Widened | None, findings: tuple[str, ...]) -> Answer:

@@ -10,6 +10,7 @@ from scipy.stats import chi2
 from shiftfix.estimation.fit import Fit
 from shiftfix.estimation.forward import ForwardModel
 from shiftfix.estimation.receivers import Receiver
+from shiftfix.physics.motion.states import States
 
 
 @dataclass(frozen=True)
@@ -30,6 +31,8 @@ class Considered:
         Unmodelled vertical electron content [1e16 /m2], independent from station to station.
     carrier_hz : float
         Carrier, for the ionosphere.
+    antenna_m : float
+        Distance of an orbiting emitter's antenna from its centre of mass, which the dynamics move, along the radius.
     ut1_s : float
         Error of UT1 when no Earth orientation is used: all Earth-fixed receivers turn together.
     """
@@ -41,12 +44,13 @@ class Considered:
     vertical_tec: float = 0.0
     carrier_hz: float = 0.0
     ut1_s: float = 0.0
+    antenna_m: float = 0.0
 
 
 def considered_changes(fit: Fit, considered: Considered) -> dict[str, np.ndarray]:
     """Return, by source, the 1-sigma changes of z that considered errors cause: (n, k) columns, independent of each other.
 
-    Sources are `time tags`, `coordinates`, `Earth rotation`, `troposphere` and `ionosphere`; absent when nothing is considered.
+    Sources are `time tags`, `coordinates`, `Earth rotation`, `emitter antenna`, `troposphere` and `ionosphere`; absent when nothing is considered.
     """
     forward, rows = fit.forward, fit.forward.rows
     receivers = forward.receivers
@@ -71,6 +75,9 @@ def considered_changes(fit: Fit, considered: Considered) -> dict[str, np.ndarray
         slopes = _coordinate_slopes(forward, fit)
         turned = [np.cross([0.0, 0.0, 7.292115e-5], _itrs(r)) * considered.ut1_s for r in receivers]
         out["Earth rotation"] = [sum(slopes[a] * np.array([t[a] for t in turned])[rows.station] for a in range(3))]
+    if considered.antenna_m:
+        moved = forward.predict(_Outward(fit.path, -considered.antenna_m))
+        out["emitter antenna"] = [moved - forward.predict(fit.path)]
     if considered.zenith_delay_m or considered.vertical_tec:
         link = forward.links(fit.path)
         if considered.zenith_delay_m:
@@ -83,6 +90,18 @@ def considered_changes(fit: Fit, considered: Considered) -> dict[str, np.ndarray
             rate = -_plain_rate(forward, mapping) * delay
             out["ionosphere"] = [rate * mine[:, s] for s in range(len(receivers)) if (rate * mine[:, s]).any()]
     return {name: np.column_stack(columns) for name, columns in out.items() if columns}
+
+
+class _Outward:
+    """Path displaced along the radius: the antenna of a satellite that keeps one side to the Earth."""
+
+    def __init__(self, path, distance_m: float) -> None:
+        self.path, self.distance_m = path, distance_m
+
+    def states(self, times_s: np.ndarray) -> States:
+        position, velocity, acceleration = self.path.states(times_s)
+        scale = self.distance_m / np.linalg.norm(position, axis=1)[:, None]
+        return States(position * (1.0 + scale), velocity * (1.0 + scale), acceleration)
 
 
 def _itrs(receiver: Receiver) -> np.ndarray:

@@ -12,7 +12,9 @@ import numpy as np
 
 from shiftfix.physics import geodesy
 from shiftfix.physics.frames import EarthFrame
+from shiftfix.physics.motion.bodies import SunMoon
 from shiftfix.physics.motion.states import Path, States
+from shiftfix.physics.tides import solid_earth_tide
 
 
 @dataclass(frozen=True)
@@ -24,17 +26,24 @@ class GroundPath:
     frame : EarthFrame
     position_itrs_m, velocity_itrs_m_s : ndarray, shape (3,)
         ITRS position at the arc epoch and its slow motion.
+    bodies : SunMoon or None
+        For the solid-Earth tide; None leaves it out (up to 0.4 m, and 0.1 mm/s, which is not in the velocity).
     """
 
     frame: EarthFrame
     position_itrs_m: np.ndarray
     velocity_itrs_m_s: np.ndarray
+    bodies: SunMoon | None = None
 
     def states(self, times_s: np.ndarray) -> States:
         """Return GCRS states at `times_s` [s past the arc epoch], shape (n, 3) each."""
         times = np.atleast_1d(np.asarray(times_s, float))
         position = self.position_itrs_m + times[:, None] * self.velocity_itrs_m_s
-        return self.frame.to_gcrs(times, position, np.broadcast_to(self.velocity_itrs_m_s, position.shape))
+        states = self.frame.to_gcrs(times, position, np.broadcast_to(self.velocity_itrs_m_s, position.shape))
+        if self.bodies is None:
+            return states
+        tide = solid_earth_tide(states.position, *self.bodies.positions(times))
+        return States(states.position + tide, states.velocity, states.acceleration)
 
     def partials(self, times_s: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
         """Return empty partials: a station has no motion parameters here."""
@@ -87,18 +96,22 @@ def ground_receiver(
     frame: EarthFrame,
     position_itrs_m: np.ndarray,
     velocity_itrs_m_s: np.ndarray | None = None,
+    bodies: SunMoon | None = None,
     **priors: float,
 ) -> Receiver:
-    """Return a receiver fixed to the ground at an ITRS position [m], with the priors of `Receiver`."""
+    """Return a receiver fixed to the ground at an ITRS position [m], with the priors of `Receiver`.
+
+    With `bodies` the solid-Earth tide moves it.
+    """
     position = np.asarray(position_itrs_m, float)
     velocity = np.zeros(3) if velocity_itrs_m_s is None else np.asarray(velocity_itrs_m_s, float)
     latitude, _, height = geodesy.geodetic_from_itrs(position)
     return Receiver(
         station_id,
-        GroundPath(frame, position, velocity),
+        GroundPath(frame, position, velocity, bodies),
         moving=False,
         height_m=float(height),
         latitude_rad=float(latitude),
-        shifted=lambda delta: GroundPath(frame, position + delta, velocity),
+        shifted=lambda delta: GroundPath(frame, position + delta, velocity, bodies),
         **priors,
     )

@@ -14,6 +14,7 @@ import numpy as np
 from shiftfix.errors import CoverageError, InputError, Problem
 from shiftfix.estimation.receivers import Receiver, ground_receiver
 from shiftfix.physics.frames import EarthFrame
+from shiftfix.physics.motion.bodies import SunMoon
 from shiftfix.physics.motion.sampled import SampledPath
 from shiftfix.physics.timescales import utc_text
 
@@ -138,7 +139,7 @@ def station_receiver(stations: Any, row: int, frame: EarthFrame, epoch_tai_ns: i
     velocity = np.array([value("vx_m_s"), value("vy_m_s"), value("vz_m_s")])
     if velocity.any():
         position = position + velocity * (epoch_tai_ns - int(stations.array("position_epoch_tai_ns")[row])) * 1e-9
-    return ground_receiver(name, frame, position, velocity, **priors)
+    return ground_receiver(name, frame, position, velocity, SunMoon(epoch_tai_ns, frame.span_s), **priors)
 
 
 def sampled_path(ephemeris: Any, name: str, frame: EarthFrame, epoch_tai_ns: int) -> SampledPath:
