@@ -59,6 +59,8 @@ def fix(inputs, params, context):
             vertical_tec=params.vertical_tec_sigma,
             carrier_hz=arc.rows.reference_hz,
             # UT1 - UTC is within 0.9 s and drifts through that range evenly: 0.5 s as 1-sigma.
+            loading_m=params.loading_sigma,
+            forces_1=params.force_model_sigma,
             antenna_m=params.emitter_antenna_sigma if bound.frame == "GCRS" else 0.0,
             ut1_s=0.5 if arc.frame.degraded else 0.0,
         ),

@@ -66,6 +66,13 @@ class FixParams:
     troposphere: str = param("none, or the delay of a standard atmosphere", default="standard", choices=("none", "standard"))
     zenith_delay_sigma: float = param("considered error of the zenith delay", default=0.05, unit="m", minimum=0.0)
     vertical_tec_sigma: float = param("considered vertical electron content, in 1e16 per square metre", default=0.0, minimum=0.0)
+    loading_sigma: float = param(
+        "considered height of ground stations that varies within hours (ocean loading, remainder of the tide)",
+        default=0.02, unit="m", minimum=0.0,
+    )
+    force_model_sigma: float = param(
+        "considered unmodelled accelerations of an orbit, as a multiple of the omitted gravity field", default=1.0, minimum=0.0
+    )
     emitter_antenna_sigma: float = param(
         "considered distance of a satellite's antenna from its centre of mass", default=1.0, unit="m", minimum=0.0
     )

@@ -8,7 +8,8 @@ from dataclasses import dataclass, field, replace
 import numpy as np
 
 from shiftfix.estimation.ambiguity import distinct_fits, odds
-from shiftfix.estimation.covariance import Considered, considered_changes, describe_direction, local_axes, nearest_distance
+from shiftfix.estimation.considered import Considered, considered_changes
+from shiftfix.estimation.covariance import describe_direction, local_axes, nearest_distance
 from shiftfix.estimation.editing import robust_spread
 from shiftfix.estimation.fit import Fit, FitSettings, fit_arc
 from shiftfix.estimation.forward import ForwardModel

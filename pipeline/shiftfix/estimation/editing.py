@@ -63,13 +63,17 @@ def robust_spread(normalised: np.ndarray) -> float:
     return float(1.4826 * np.median(np.abs(normalised))) if normalised.size else 1.0
 
 
-def robust_weights(normalised: np.ndarray, gates: Gates) -> np.ndarray:
+def robust_weights(normalised: np.ndarray, gates: Gates, station: np.ndarray | None = None) -> np.ndarray:
     """Return weights in (0, 1] from residuals in units of their 1-sigma; rejected rows get NEGLIGIBLE_WEIGHT.
 
-    The gates widen with the robust spread when it exceeds 1, so that a too small stated sigma does not reject good rows.
+    The gates widen with the robust spread of the station when it exceeds 1, so that a too small stated sigma does not
+    reject good rows, and a poor station's noise does not hide a good one's outliers.
     """
     if gates.keep_all:
         return np.ones_like(normalised)
-    size = np.abs(normalised) / max(robust_spread(normalised), 1.0)
+    size = np.abs(normalised)
+    for s in np.unique(station) if station is not None else (None,):
+        mine = slice(None) if s is None else station == s
+        size[mine] = size[mine] / max(robust_spread(normalised[mine]), 1.0)
     weights = np.minimum(1.0, gates.downweight_1 / np.maximum(size, 1e-300))
     return np.where(size > gates.reject_1, NEGLIGIBLE_WEIGHT, weights)

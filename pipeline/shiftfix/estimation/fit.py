@@ -166,7 +166,7 @@ def fit_arc(
         parameters = minimum.parameters
         iterations += minimum.iterations
         residuals = rows.z - memo.prediction(parameters) - linear_model.columns @ linear
-        renewed = robust_weights(residuals / rows.sigma, settings.gates)
+        renewed = robust_weights(residuals / rows.sigma, settings.gates, rows.station)
         change = np.abs(np.log(renewed / weights)).max(initial=0.0)
         if settings.gates.keep_all or change < 0.02:
             break

@@ -87,7 +87,8 @@ def minimise(
         q, upper = qr(j / column, mode="economic", check_finite=False)
         right = q.T @ r
         expected = float(right @ right)
-        if expected <= max(tolerance, 1e-14 * cost):
+        # Where the residuals exceed one sigma, a step is small against them, not against the stated noise.
+        if expected <= max(tolerance * max(1.0, cost / max(r.size, 1)), 1e-14 * cost):
             converged = True
             break
         improved = False
@@ -106,7 +107,7 @@ def minimise(
                 break
         if not improved:
             # No direction lowers the cost: at the rounding level of the residuals this is the minimum.
-            converged = expected <= max(1e-3, 1e-9 * cost)
+            converged = expected <= max(1e-3 * max(1.0, cost / max(r.size, 1)), 1e-9 * cost)
             break
         j = jacobian(x)
     return Minimum(x, r, j, cost, converged, iterations)
