@@ -21,8 +21,17 @@ def _later(module: str, name: str):
 
 def _receiver_readers() -> tuple[NodeSpec, ...]:
     from shiftfix_ingest.rinex import RinexParams
+    from shiftfix_ingest.tdm import TdmParams
 
     return (
+        NodeSpec(
+            name="tdm",
+            summary="received frequencies from CCSDS tracking data messages, KVN or XML, one-way",
+            function=_later("tdm", "read_tdm"),
+            outputs={"frequencies": Port(FrequencyTable, "received frequencies")},
+            params=TdmParams,
+            recognise=_later("tdm", "recognise"),
+        ),
         NodeSpec(
             name="rinex",
             summary="received frequencies from RINEX observation files: differenced carrier phase or Doppler",
@@ -35,9 +44,18 @@ def _receiver_readers() -> tuple[NodeSpec, ...]:
 
 
 def _precise_orbit_readers() -> tuple[NodeSpec, ...]:
+    from shiftfix_ingest.oem import OemParams
     from shiftfix_ingest.sp3 import Sp3Params
 
     return (
+        NodeSpec(
+            name="oem",
+            summary="sampled states from CCSDS orbit ephemeris messages, KVN or XML",
+            function=_later("oem", "read_oem"),
+            outputs=_EPHEMERIS,
+            params=OemParams,
+            recognise=_later("oem", "recognise"),
+        ),
         NodeSpec(
             name="sp3",
             summary="precise satellite orbits and clocks from SP3 files",
