@@ -74,7 +74,7 @@ _EXPORTS: dict[str, str] = {
     "ArcScene": "shiftfix.estimation.motions",
     "BoundMotion": "shiftfix.estimation.motions",
     "ClockModels": "shiftfix.estimation.nuisance",
-    "Considered": "shiftfix.estimation.covariance",
+    "Considered": "shiftfix.estimation.considered",
     "EarthFrame": "shiftfix.physics.frames",
     "Fit": "shiftfix.estimation.fit",
     "FitSettings": "shiftfix.estimation.fit",

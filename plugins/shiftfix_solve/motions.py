@@ -70,7 +70,9 @@ def surface(options, scene) -> BoundMotion:
             out.append(moved)
         return np.vstack(out)
 
-    return BoundMotion("surface", motion, candidates, motion.states_batch, "ITRS", scene.frame, tuple(priors))
+    return BoundMotion(
+        "surface", motion, candidates, motion.states_batch, "ITRS", scene.frame, tuple(priors), scanned=tuple(turn_index)
+    )
 
 
 def fixed(options, scene) -> BoundMotion:
@@ -135,4 +137,4 @@ def _region(options, scene, data, height_m: float):
     spread = float(np.linalg.norm(position - centre, axis=1).max())
     latitude, longitude, _ = geodetic_from_itrs(centre)
     centre = itrs_from_geodetic(latitude, longitude, 0.0)
-    return ground_places(centre, options.radius or (3.0 * spread + 150e3), height_m)
+    return ground_places(centre, options.radius or (3.0 * spread + 150e3), height_m, 300)

@@ -68,7 +68,7 @@ def search(inputs, params, context):
     context.progress(0.3, f"{len(candidates)} candidates")
     states, cost = refine(
         data, bound.states_batch, candidates, bound.motion.scales, priors=tuple(bound.priors),
-        schedule=((6, 160), (10, 60), (20, max(params.keep, 16))), check_cancelled=context.check_cancelled,
+        schedule=((2, 240), (4, 100), (10, 40), (20, max(params.keep, 16))), check_cancelled=context.check_cancelled,
     )
     states, cost = states[: params.keep], cost[: params.keep]
     rms = np.sqrt(cost / max(len(data.z), 1))

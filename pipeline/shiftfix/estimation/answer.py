@@ -10,7 +10,7 @@ import numpy as np
 from shiftfix.estimation.ambiguity import distinct_fits, odds
 from shiftfix.estimation.considered import Considered, considered_changes
 from shiftfix.estimation.covariance import describe_direction, local_axes, nearest_distance
-from shiftfix.estimation.editing import robust_spread
+from shiftfix.estimation.editing import Gates, robust_spread
 from shiftfix.estimation.fit import Fit, FitSettings, fit_arc
 from shiftfix.estimation.forward import ForwardModel
 from shiftfix.estimation.leastsquares import projection
@@ -182,11 +182,50 @@ def _fits(rows, receivers, bound, starts, settings: AnswerSettings, forward: For
     fits, failures = [], []
     for start in starts:
         settings.fit.check_cancelled()
+        if any(_inside(start, fit, bound.scanned) for fit in fits):
+            continue
         try:
+            if bound.scanned:
+                start = _scanned(rows, receivers, bound, start, settings.fit, forward)
             fits.append(fit_arc(rows, receivers, bound.motion, start, settings.fit, forward=forward))
         except ValueError as error:
             failures.append(str(error))
     return fits, failures
+
+
+def _inside(start: np.ndarray, fit: Fit, scanned: tuple[int, ...]) -> bool:
+    """Return whether a start lies within three standard deviations of a solution that is there already."""
+    p = start.size
+    difference = np.abs(start - fit.parameters)
+    near = difference < 3.0 * np.sqrt(np.diag(fit.covariance)[:p]) + 1e-3 * fit.motion.scales
+    near[list(scanned)] = True
+    return bool(fit.converged and near.all())
+
+
+def _scanned(rows, receivers, bound, start, settings: FitSettings, forward: ForwardModel) -> np.ndarray:
+    """Return a start whose scanned parameters lie where the cost of all rows is least, the others fitted to them."""
+    plain = replace(settings, gates=Gates(keep_all=True))
+    linear = nuisance(rows, receivers, settings.clocks)
+    whiten = whitener(rows.sigma, rows.chained)
+    eliminate = projection(whiten(linear.columns), linear.prior_rows, linear.prior_values)
+
+    def cost(parameters: np.ndarray) -> float:
+        try:
+            r = eliminate.residuals(whiten(rows.z - forward.predict(bound.motion.at(parameters))))
+        except ValueError:
+            return np.inf
+        return float(np.minimum(r**2, 400.0).sum())
+
+    best = np.array(start, float)
+    # Half the spacing of the thinned search, then a few counts, then within a count.
+    span = float(np.ptp(rows.middle_s))
+    for width in (span / 8, span / 24, span / 100):
+        for index in bound.scanned:
+            trials = np.repeat(best[None], 33, axis=0)
+            trials[:, index] += np.linspace(-width, width, 33)
+            best = trials[int(np.argmin([cost(t) for t in trials]))]
+        best = fit_arc(rows, receivers, bound.motion, best, plain, forward=forward).parameters
+    return best
 
 
 def _by_elevation(rows: Observations, fit: Fit, settings: AnswerSettings) -> tuple[np.ndarray, Observations]:

@@ -52,6 +52,9 @@ class BoundMotion:
     earth : EarthFrame
     height_known : bool
         Whether a prior of the height was declared: without one, a mirror in height is possible.
+    scanned : tuple of int
+        Parameters that a derivative cannot lead far (times of turns: only the count that holds the turn feels it); they
+        are scanned before each fit.
     """
 
     name: str
@@ -62,6 +65,7 @@ class BoundMotion:
     earth: EarthFrame
     priors: Sequence = field(default=())
     height_known: bool = True
+    scanned: tuple[int, ...] = ()
 
     def state(self, path: Path, time_s: float = 0.0) -> tuple[np.ndarray, np.ndarray, np.ndarray]:
         """Return position [m], velocity [m/s] in `frame` at a time, and d(position, velocity) / d parameters (6, p)."""
