@@ -16,7 +16,7 @@ MARKERS = ("META_START", "META_STOP", "DATA_START", "DATA_STOP", "COVARIANCE_STA
 
 @dataclass(frozen=True)
 class Line:
-    """One line that is not blank: number, kind (assignment, comment, marker, other), keyword and value (or whole text)."""
+    """One line that is not blank: number, kind (assignment, comment, marker, other), keyword and value or text."""
 
     number: int
     kind: str
@@ -44,7 +44,9 @@ def message_lines(source: SourceFile, standard: str, problems: list[Problem]) ->
             continue
         where = f"{source.name}:{number}"
         if len(raw) > _LONGEST:
-            problems.append(Problem(where, "line too long", found=f"{len(raw)} characters", allowed=f"{_LONGEST} ({standard})"))
+            problems.append(
+                Problem(where, "line too long", found=f"{len(raw)} characters", allowed=f"{_LONGEST} ({standard})")
+            )
             continue
         if text == "COMMENT" or text.startswith("COMMENT "):
             yield Line(number, "comment", "COMMENT", text[8:])
@@ -52,7 +54,12 @@ def message_lines(source: SourceFile, standard: str, problems: list[Problem]) ->
         strange = next((c for c in text if not 32 <= ord(c) < 127), "")
         if strange:
             problems.append(
-                Problem(where, "character that is not allowed", found=repr(strange), allowed=f"printable ASCII, no tab ({standard})")
+                Problem(
+                    where,
+                    "character that is not allowed",
+                    found=repr(strange),
+                    allowed=f"printable ASCII, no tab ({standard})",
+                )
             )
             continue
         if text in MARKERS:
@@ -63,6 +70,8 @@ def message_lines(source: SourceFile, standard: str, problems: list[Problem]) ->
             yield Line(number, "other", "", text)
             continue
         if not match[2]:
-            problems.append(Problem(where, f"{match[1]} has no value", allowed=f"a value for every keyword ({standard})"))
+            problems.append(
+                Problem(where, f"{match[1]} has no value", allowed=f"a value for every keyword ({standard})")
+            )
             continue
         yield Line(number, "assignment", match[1], match[2])

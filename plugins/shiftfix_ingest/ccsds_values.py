@@ -1,8 +1,8 @@
 """Values of CCSDS messages: numbers, epochs and texts, as the standards allow them.
 
 Numbers keep their digits until the end: `float` of a text is correctly rounded, sums are made in exact decimals first.
-Stricter than needed is avoided where the standards' own annexes are looser than their rules: integers are accepted where
-floating point is meant, more than 16 digits and a negative zero are accepted. NaN and infinities are not.
+Stricter than needed is avoided where the standards' own annexes are looser than their rules: integers are accepted
+where floating point is meant, more than 16 digits and a negative zero are accepted. NaN and infinities are not.
 """
 
 from __future__ import annotations

@@ -68,12 +68,18 @@ def parse_xml(source: SourceFile, root: str) -> tuple[Element | None, list[Probl
         parser.Parse(source.data, True)
     except _Refused as refused:
         return None, [
-            Problem(f"{source.name}:{parser.CurrentLineNumber}", str(refused), allowed="plain elements and text (CCSDS 505.0-B)")
+            Problem(
+                f"{source.name}:{parser.CurrentLineNumber}",
+                str(refused),
+                allowed="plain elements and text (CCSDS 505.0-B)",
+            )
         ]
     except expat.ExpatError as error:
         return None, [
             Problem(
-                f"{source.name}:{error.lineno}", "not well-formed XML", found=expat.ErrorString(error.code),
+                f"{source.name}:{error.lineno}",
+                "not well-formed XML",
+                found=expat.ErrorString(error.code),
                 remedy="the file is truncated or damaged here: fetch it again",
             )
         ]
@@ -82,9 +88,13 @@ def parse_xml(source: SourceFile, root: str) -> tuple[Element | None, list[Probl
         inside = [c for c in top.children if c.name == root]
         if len(inside) != 1:
             return None, [
-                Problem(f"{source.name}:{top.line}", f"envelope with {len(inside)} {root} messages", allowed="one a file")
+                Problem(
+                    f"{source.name}:{top.line}", f"envelope with {len(inside)} {root} messages", allowed="one a file"
+                )
             ]
         top = inside[0]
     if top.name != root:
-        return None, [Problem(f"{source.name}:{top.line}", "another kind of message", found=f"<{top.name}>", allowed=f"<{root}>")]
+        return None, [
+            Problem(f"{source.name}:{top.line}", "another kind of message", found=f"<{top.name}>", allowed=f"<{root}>")
+        ]
     return top, []

@@ -1,8 +1,8 @@
 """Orbit ephemeris messages (CCSDS OEM, KVN and XML) to an `Ephemeris`.
 
-Frames: GCRF and ICRF are taken as GCRS (the same axes), EME2000 is turned by the frame bias (IERS Conventions 2010, 23 mas:
-0.7 m at 7000 km), ITRF and its realisations are taken as ITRS (they differ by centimetres). Others are refused. One
-centre, the Earth; km and km/s become metres. Accelerations and covariances are passed over and counted.
+Frames: GCRF and ICRF are taken as GCRS (the same axes), EME2000 is turned by the frame bias (IERS Conventions 2010,
+23 mas: 0.7 m at 7000 km), ITRF and its realisations are taken as ITRS (they differ by centimetres). Others are
+refused. One centre, the Earth; km and km/s become metres. Accelerations and covariances are passed over and counted.
 
 References
 ----------
@@ -74,8 +74,8 @@ def read_oem(inputs: Any, params: OemParams, context: Any) -> dict[str, Ephemeri
         bad += [p for b in blocks for p in _block_problems(b, source.name)] if not bad else []
         problems += bad
         found.append((source, blocks))
-    frames = {_frame(b) for _, blocks in found for b in blocks}
-    if not problems and len(frames) > 1:
+    frames = set() if problems else {_frame(b) for _, blocks in found for b in blocks}
+    if len(frames) > 1:
         problems.append(
             Problem(
                 ", ".join(s.name for s, _ in found), "inertial and Earth-fixed frames in one ephemeris",
@@ -104,7 +104,9 @@ def read_oem(inputs: Any, params: OemParams, context: Any) -> dict[str, Ephemeri
         context.logger.warning("%s", text)
     if not sum(len(r) for r in rows):
         raise InputError(
-            Problem(", ".join(s.name for s, _ in found), "no state lies in a useable span", remedy='set params.span = "all"')
+            Problem(
+                ", ".join(s.name for s, _ in found), "no state lies in a useable span", remedy='set params.span = "all"'
+            )
         )
     return {
         "ephemeris": Ephemeris(
@@ -123,7 +125,9 @@ def _block_problems(block: Block, name: str) -> list[Problem]:
     meta, lines = block.metadata, block.lines
     out = []
     if same_text(meta["CENTER_NAME"]) != "EARTH":
-        out.append(Problem(f"{name}:{lines['CENTER_NAME']}", "another centre", found=meta["CENTER_NAME"], allowed="EARTH"))
+        out.append(
+            Problem(f"{name}:{lines['CENTER_NAME']}", "another centre", found=meta["CENTER_NAME"], allowed="EARTH")
+        )
     frame = same_text(meta["REF_FRAME"])
     if frame not in _INERTIAL and not frame.startswith("ITRF"):
         out.append(
@@ -133,22 +137,40 @@ def _block_problems(block: Block, name: str) -> list[Problem]:
     scale = same_text(meta["TIME_SYSTEM"])
     if scale not in _SCALES:
         out.append(
-            Problem(f"{name}:{lines['TIME_SYSTEM']}", "time system that cannot be converted", found=meta["TIME_SYSTEM"], allowed=", ".join(_SCALES))
+            Problem(
+                f"{name}:{lines['TIME_SYSTEM']}",
+                "time system that cannot be converted",
+                found=meta["TIME_SYSTEM"],
+                allowed=", ".join(_SCALES),
+            )
         )
         return out
     times, bad = tai_ns_from_texts(block.epochs, scale, require_z=False)
-    out += [Problem(f"{name}:{block.rows[k]}", "epoch cannot be read", found=block.epochs[k], allowed=text) for k, text in bad]
+    out += [
+        Problem(f"{name}:{block.rows[k]}", "epoch cannot be read", found=block.epochs[k], allowed=text)
+        for k, text in bad
+    ]
     if not bad:
         out += [
-            Problem(f"{name}:{block.rows[k + 1]}", "epochs do not increase", found=block.epochs[k + 1], allowed=f"increasing ({STANDARD}, section 5)")
+            Problem(
+                f"{name}:{block.rows[k + 1]}",
+                "epochs do not increase",
+                found=block.epochs[k + 1],
+                allowed=f"increasing ({STANDARD}, section 5)",
+            )
             for k in np.flatnonzero(np.diff(times) <= 0)
         ]
     keys = [k for k in ("START_TIME", "USEABLE_START_TIME", "USEABLE_STOP_TIME", "STOP_TIME") if k in meta]
     limits, bad = tai_ns_from_texts([meta[k] for k in keys], scale, require_z=False)
-    out += [Problem(f"{name}:{lines[keys[k]]}", "epoch cannot be read", found=meta[keys[k]], allowed=text) for k, text in bad]
+    out += [
+        Problem(f"{name}:{lines[keys[k]]}", "epoch cannot be read", found=meta[keys[k]], allowed=text)
+        for k, text in bad
+    ]
     if not bad and (np.diff(limits) < 0).any():
         k = int(np.flatnonzero(np.diff(limits) < 0)[0])
-        out.append(Problem(f"{name}:{lines[keys[k + 1]]}", f"{keys[k + 1]} lies before {keys[k]}", found=meta[keys[k + 1]]))
+        out.append(
+            Problem(f"{name}:{lines[keys[k + 1]]}", f"{keys[k + 1]} lies before {keys[k]}", found=meta[keys[k + 1]])
+        )
     return out
 
 
@@ -172,14 +194,16 @@ def _block_rows(block: Block, params: OemParams) -> Any:
     name = meta["OBJECT_NAME"]
     ids = {same_text(k): v for k, v in params.objects.items()}
     name = ids.get(same_text(name)) or ids.get(same_text(meta["OBJECT_ID"])) or name
-    frame = pd.DataFrame(np.column_stack([position, velocity]), columns=["x_m", "y_m", "z_m", "vx_m_s", "vy_m_s", "vz_m_s"])
+    frame = pd.DataFrame(
+        np.column_stack([position, velocity]), columns=["x_m", "y_m", "z_m", "vx_m_s", "vy_m_s", "vz_m_s"]
+    )
     frame.insert(0, "time_tai_ns", times)
     frame.insert(0, "object_id", name)
     return frame[keep]
 
 
 def frame_bias() -> np.ndarray:
-    """Return the frame bias matrix B of IAU 2000, shape (3, 3): r in EME2000 = B @ r in GCRS; rows turn back by r @ B."""
+    """Return the frame bias B of IAU 2000, shape (3, 3): r in EME2000 = B @ r in GCRS; rows turn back by r @ B."""
     import erfa
 
     bias, _, _ = erfa.bp00(2451545.0, 0.0)

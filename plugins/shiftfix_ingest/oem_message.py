@@ -82,13 +82,25 @@ def _rules(block: Block, name: str) -> list[Problem]:
     place = -1
     for keyword, line in block.lines.items():
         if keyword not in _METADATA:
-            out.append(Problem(f"{name}:{line}", "unknown keyword in the metadata", found=keyword, allowed=", ".join(_METADATA)))
+            out.append(
+                Problem(
+                    f"{name}:{line}", "unknown keyword in the metadata", found=keyword, allowed=", ".join(_METADATA)
+                )
+            )
             continue
         if _METADATA.index(keyword) < place:
-            out.append(Problem(f"{name}:{line}", f"{keyword} out of order", allowed=f"the order of {STANDARD}, section 5"))
+            out.append(
+                Problem(f"{name}:{line}", f"{keyword} out of order", allowed=f"the order of {STANDARD}, section 5")
+            )
         place = max(place, _METADATA.index(keyword))
     if "INTERPOLATION" in block.metadata and "INTERPOLATION_DEGREE" not in block.metadata:
-        out.append(Problem(where, "INTERPOLATION_DEGREE is missing", allowed=f"mandatory with INTERPOLATION ({STANDARD}, section 5)"))
+        out.append(
+            Problem(
+                where,
+                "INTERPOLATION_DEGREE is missing",
+                allowed=f"mandatory with INTERPOLATION ({STANDARD}, section 5)",
+            )
+        )
     if len(block.states) < 2 and not out:
         out.append(Problem(where, "fewer than two states follow", found=str(len(block.states)), allowed="at least two"))
     return out
@@ -108,7 +120,9 @@ def _state(texts: list[str], where: str, problems: list[Problem]) -> tuple[float
 def _take(block: Block, epoch: str, texts: list[str], line: int, source: SourceFile, problems: list[Problem]) -> None:
     where = f"{source.name}:{line}"
     if not is_epoch(epoch):
-        problems.append(Problem(where, "epoch cannot be read", found=epoch, allowed=f"{EPOCH_RULE} ({STANDARD}, section 7)"))
+        problems.append(
+            Problem(where, "epoch cannot be read", found=epoch, allowed=f"{EPOCH_RULE} ({STANDARD}, section 7)")
+        )
         return
     state = _state(texts, where, problems)
     if state:
@@ -129,17 +143,26 @@ def _from_lines(source: SourceFile) -> tuple[list[Block], set[str], str | None, 
         if place == "start":
             if line.keyword != "CCSDS_OEM_VERS":
                 problems.append(
-                    Problem(where, "not an orbit ephemeris message", found=repr(f"{line.keyword} {line.value}".strip()[:60]),
-                            allowed=f"CCSDS_OEM_VERS = 3.0 as the first line that is not blank ({STANDARD}, section 5)")
+                    Problem(
+                        where,
+                        "not an orbit ephemeris message",
+                        found=repr(f"{line.keyword} {line.value}".strip()[:60]),
+                        allowed=f"CCSDS_OEM_VERS = 3.0 as the first line that is not blank ({STANDARD}, section 5)",
+                    )
                 )
                 return blocks, header, None, problems
             version, place = line.value, "header"
         elif line.kind == "comment":
             continue
         elif line.kind == "marker":
-            fits = {"META_START": ("header", "data"), "META_STOP": ("meta",), "COVARIANCE_START": ("data",), "COVARIANCE_STOP": ("covariance",)}
+            fits = {
+                "META_START": ("header", "data"),
+                "META_STOP": ("meta",),
+                "COVARIANCE_START": ("data",),
+                "COVARIANCE_STOP": ("covariance",),
+            }
             if place not in fits.get(line.keyword, ()):
-                problems.append(Problem(where, f"{line.keyword} out of place", allowed=f"{STANDARD}, 5.2"))
+                problems.append(Problem(where, f"{line.keyword} out of place", allowed=f"{STANDARD}, section 5"))
             if line.keyword == "META_START":
                 blocks.append(Block(line.number))
                 place = "meta"
@@ -149,11 +172,20 @@ def _from_lines(source: SourceFile) -> tuple[list[Block], set[str], str | None, 
                 place = "data"
         elif place == "header":
             if line.kind != "assignment" or line.keyword not in _HEADER:
-                problems.append(Problem(where, "unknown keyword in the header", found=line.keyword or line.value[:40], allowed=", ".join(_HEADER)))
+                problems.append(
+                    Problem(
+                        where,
+                        "unknown keyword in the header",
+                        found=line.keyword or line.value[:40],
+                        allowed=", ".join(_HEADER),
+                    )
+                )
             header.add(line.keyword)
         elif place == "meta":
             if line.kind != "assignment":
-                problems.append(Problem(where, "line is no assignment", found=line.value[:60], allowed="KEYWORD = value"))
+                problems.append(
+                    Problem(where, "line is no assignment", found=line.value[:60], allowed="KEYWORD = value")
+                )
                 continue
             if line.keyword in blocks[-1].metadata:
                 problems.append(Problem(where, f"{line.keyword} is repeated", allowed="once a block"))
@@ -162,13 +194,31 @@ def _from_lines(source: SourceFile) -> tuple[list[Block], set[str], str | None, 
         elif place == "covariance":
             blocks[-1].covariances += line.keyword == "EPOCH"
         elif line.kind != "other":
-            problems.append(Problem(where, "keyword among the states", found=line.keyword, allowed=f"epoch and 6 or 9 numbers ({STANDARD}, section 5)"))
+            problems.append(
+                Problem(
+                    where,
+                    "keyword among the states",
+                    found=line.keyword,
+                    allowed=f"epoch and 6 or 9 numbers ({STANDARD}, section 5)",
+                )
+            )
         elif blocks:
             epoch, *texts = line.value.split()
             _take(blocks[-1], epoch, texts, line.number, source, problems)
     if place in ("start", "header", "meta", "covariance"):
-        missing = {"start": "CCSDS_OEM_VERS", "header": "META_START", "meta": "META_STOP", "covariance": "COVARIANCE_STOP"}[place]
-        problems.append(Problem(f"{source.name}:{last}", f"the message ends without {missing}", remedy="the file is truncated: fetch it again"))
+        missing = {
+            "start": "CCSDS_OEM_VERS",
+            "header": "META_START",
+            "meta": "META_STOP",
+            "covariance": "COVARIANCE_STOP",
+        }[place]
+        problems.append(
+            Problem(
+                f"{source.name}:{last}",
+                f"the message ends without {missing}",
+                remedy="the file is truncated: fetch it again",
+            )
+        )
     return blocks, header, version, problems
 
 
@@ -199,5 +249,7 @@ def _from_xml(source: SourceFile) -> tuple[list[Block], set[str], str | None, li
                     continue
                 _take(block, values["EPOCH"], [values[k] for k in known], item.line, source, problems)
             elif item.name != "COMMENT":
-                problems.append(Problem(f"{source.name}:{item.line}", "unknown element in the data", found=f"<{item.name}>"))
+                problems.append(
+                    Problem(f"{source.name}:{item.line}", "unknown element in the data", found=f"<{item.name}>")
+                )
     return blocks, {c.name for c in header.children}, root.attributes.get("version", ""), problems

@@ -1,9 +1,10 @@
 """Unbroken phase records: where a receiver's carrier phase starts anew, and why.
 
 Arrays are grids (e, s) of epochs by satellites, NaN where nothing was observed; phases and codes are range-like metres.
-A slip is looked for in three ways; what escapes all of them are slips whose effect on L1 - L2 is below 4 cm and on phase
-minus code below 4 m: a cycle on both frequencies at once is 5.4 cm and is seen, 5 on L1 with 4 on L2 (2.5 cm) or 9 with 7
-(0.3 cm) are not, unless the receiver flags them. With one frequency, slips below 4 m (21 cycles) escape.
+A slip is looked for in three ways; what escapes all of them are slips whose effect on L1 - L2 is below 4 cm and on
+phase minus code below 4 m (or below 6 times the noise at that place): a cycle on both frequencies at once is 5.4 cm
+and is seen, 5 on L1 with 4 on L2 (2.5 cm) or 9 with 7 (0.3 cm) are not, unless the receiver flags them. With one
+frequency, slips below 4 m (21 cycles) escape.
 """
 
 from __future__ import annotations
@@ -77,8 +78,8 @@ def recording_interval_s(time_tai_ns: np.ndarray) -> float:
 def millisecond_resets(grid: PhaseGrid) -> np.ndarray:
     """Return, for each epoch, whether the receiver clock was reset by whole milliseconds since the epoch before.
 
-    Seen in the phase, in the code or in the tags alone: at least half of the satellites jump by the same amount, at least
-    half a millisecond of light, against the rate of the neighbouring steps.
+    Seen in the phase, in the code or in the tags alone: at least half of the satellites jump by the same amount, at
+    least half a millisecond of light, against the rate of the neighbouring steps.
     """
     step_s, adjacent = _steps(grid)
     out = np.zeros(len(grid.time_tai_ns), bool)
@@ -161,7 +162,7 @@ def code_slips(grid: PhaseGrid, usual: np.ndarray) -> np.ndarray:
 
 
 def band_slips(grid: PhaseGrid, usual: np.ndarray) -> np.ndarray:
-    """Return where L1 - L2 jumps against the neighbouring steps: by 4 cm and 6 times the noise of the steps about it."""
+    """Return where L1 - L2 jumps against the neighbouring steps: by 4 cm and 6 times their noise."""
     step_s, _ = _steps(grid)
     rate = np.where(usual[1:], np.diff(grid.phase_m[0] - grid.phase_m[1], axis=0), np.nan) / step_s[:, None]
     off = (rate - _neighbours(rate)) * step_s[:, None]

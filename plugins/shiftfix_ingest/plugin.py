@@ -67,36 +67,6 @@ def _precise_orbit_readers() -> tuple[NodeSpec, ...]:
     )
 
 
-def _book_and_text_readers() -> tuple[NodeSpec, ...]:
-    from shiftfix_ingest.delimited_params import DelimitedParams
-    from shiftfix_ingest.stations import BookParams
-
-    return (
-        NodeSpec(
-            name="stations",
-            summary="station book: positions, oscillators and clocks with their errors",
-            function=_later("stations", "read_stations"),
-            inputs={"ephemeris": Port(Ephemeris, "tracks of moving stations", optional=True, many=True)},
-            outputs={"stations": Port(StationTable, "stations")},
-            params=BookParams,
-        ),
-        NodeSpec(
-            name="emitters",
-            summary="book of known emitters: rest frequency and place",
-            function=_later("stations", "read_emitters"),
-            outputs={"emitters": Port(EmitterTable, "known emitters")},
-            params=BookParams,
-        ),
-        NodeSpec(
-            name="delimited",
-            summary="delimited text with declared columns, units and time scale",
-            function=_later("delimited", "read_delimited"),
-            outputs={"frequencies": Port(FrequencyTable, "received frequencies")},
-            params=DelimitedParams,
-        ),
-    )
-
-
 @hookimpl
 def shiftfix_nodes():
     """Return the readers of this plugin."""

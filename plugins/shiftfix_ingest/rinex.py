@@ -1,23 +1,23 @@
 """RINEX observation files to received frequencies: differences of carrier phase (means) or Doppler (instantaneous).
 
-Phase: between consecutive epochs of one unbroken record the mean received frequency is f0 (1 - dL / (c dt)), L the phase
-in metres (it grows with range), dt the difference of the tags. Doppler: f0 + D, D positive for approach. Times stay what
-the receiver wrote: true time = tag - clock offset; the code ranges at both ends travel along, so that the offset can be
-found later. What counts as read is one record (one satellite at one epoch) of a satellite, time and spacing that the
-parameters ask for; a record that makes no row is a reject, the first one of each unbroken record included.
+Phase: between consecutive epochs of one unbroken record the mean received frequency is f0 (1 - dL / (c dt)), L the
+phase in metres (it grows with range), dt the difference of the tags. Doppler: f0 + D, D positive for approach. Times
+stay what the receiver wrote: true time = tag - clock offset; the code ranges at both ends travel along, so that the
+offset can be found later. What counts as read is one record (one satellite at one epoch) of a satellite, time and
+spacing that the parameters ask for; a record that makes no row is a reject, the first one of each unbroken record
+included.
 """
 
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass, field
+from dataclasses import dataclass
 from pathlib import PurePath
 from typing import Any
 
 import numpy as np
 
 from shiftfix.api import (
-    SPEED_OF_LIGHT_M_S,
     FrequencyTable,
     InputError,
     Problem,
@@ -26,15 +26,13 @@ from shiftfix.api import (
     param,
     tai_ns_from_utc,
 )
-from shiftfix_ingest.phase_records import REASONS, phase_arcs
-from shiftfix_ingest.rinex_grid import StationGrid, station_grid
+from shiftfix_ingest.rinex_grid import station_grid
+from shiftfix_ingest.rinex_rows import Taken, take
 from shiftfix_ingest.rinex_signals import BANDS, unknown_signals
 from shiftfix_ingest.rinex_text import ObservationFile, parse_observations
 from shiftfix_ingest.source_files import SourceFile, binary_problem, head_text, open_sources, repeat_problems
 
-_COMBINED_NOISE = 3.0  # noise of the two-band combination over that of one band: 2.98 for GPS L1/L2
 _SAME_PLACE_M = 1000.0
-_GPS_TAI_NS = 19_000_000_000
 
 
 @dataclass(frozen=True)
@@ -49,7 +47,9 @@ class RinexParams:
     exclude_satellites: tuple[str, ...] = param("satellites to leave out", default=())
     observable: str = param("what gives the frequency", default="phase", choices=("phase", "doppler"))
     combination: str = param(
-        "one band, or two combined so that the ionosphere cancels", default="single", choices=("single", "ionosphere_free")
+        "one band, or two combined so that the ionosphere cancels",
+        default="single",
+        choices=("single", "ionosphere_free"),
     )
     signals: tuple[str, ...] = param("observation codes to prefer, as in L1C, L2W, C2W", default=())
     doppler_sign: str = param("sign of the Doppler in the files", default="rinex", choices=("rinex", "reversed"))
@@ -67,14 +67,6 @@ class RinexParams:
         "refuse: the same file twice is an error; ignore: it is used once and noted", default="refuse",
         choices=("refuse", "ignore"),
     )
-
-
-@dataclass
-class _Taken:
-    """Rows and rejects of one station."""
-
-    columns: dict[str, np.ndarray]
-    rejects: list[tuple[int, int, str]] = field(default_factory=list)
 
 
 def recognise(path: Any, first_bytes: bytes) -> bool:
@@ -108,16 +100,19 @@ def read_rinex(inputs: Any, params: RinexParams, context: Any) -> dict[str, Freq
     problems += bad
     if not problems:
         problems += unknown_signals(files, params.signals)
-    parts: list[tuple[str, Sequence[ObservationFile], _Taken]] = []
+    parts: list[tuple[str, Sequence[ObservationFile], Taken]] = []
     for station, mine in by_station.items():
         grid, bad = station_grid(
-            mine, combined=params.combination == "ionosphere_free", observable=params.observable, signals=params.signals,
+            mine,
+            combined=params.combination == "ionosphere_free",
+            observable=params.observable,
+            signals=params.signals,
             reversed_doppler=params.doppler_sign == "reversed",
         )
         problems += bad
         notes += grid.notes
         if not problems:
-            parts.append((station, mine, _take(station, grid, mine, params, span)))
+            parts.append((station, mine, take(station, grid, mine, params, span)))
     if problems:
         raise InputError(problems)
     table = _table(parts, params, tuple(notes))
@@ -141,7 +136,12 @@ def _observations(source: SourceFile) -> tuple[ObservationFile, list[Problem]]:
             data = hatanaka.decompress(data)
         except (hatanaka.HatanakaException, ValueError) as error:
             return ObservationFile(source, None), [
-                Problem(source.name, "the compressed file is truncated or damaged", found=str(error).strip()[:200], remedy="fetch it again")
+                Problem(
+                    source.name,
+                    "the compressed file is truncated or damaged",
+                    found=str(error).strip()[:200],
+                    remedy="fetch it again",
+                )
             ]
         source = SourceFile(source.path, source.name, source.sha256, data)
     return parse_observations(source)
@@ -161,150 +161,53 @@ def _span(params: RinexParams) -> tuple[tuple[int, int], list[Problem]]:
 
 def _satellite_problems(params: RinexParams) -> list[Problem]:
     return [
-        Problem(f"params.{field_}", "not a satellite that can be read", found=s, allowed="G01 to G32 (GPS), E01 to E36 (Galileo)")
+        Problem(
+            f"params.{field_}",
+            "not a satellite that can be read",
+            found=s,
+            allowed="G01 to G32 (GPS), E01 to E36 (Galileo)",
+        )
         for field_ in ("satellites", "exclude_satellites")
         for s in getattr(params, field_)
         if not (len(s) == 3 and s[0] in BANDS and s[1:].isdigit())
     ]
 
 
-def _stations(files: Sequence[ObservationFile], names: Mapping[str, str]) -> tuple[dict[str, list[ObservationFile]], list[Problem]]:
+def _stations(
+    files: Sequence[ObservationFile], names: Mapping[str, str]
+) -> tuple[dict[str, list[ObservationFile]], list[Problem]]:
     """Return the files by station, in the order of their first epochs, and what is wrong with the names."""
     out: dict[str, list[ObservationFile]] = {}
     problems: list[Problem] = []
     present = {PurePath(f.source.name).name for f in files}
     for key in names:
         if files and key not in present and key not in {f.source.name for f in files}:
-            problems.append(Problem("params.stations", "no such file is read", found=key, allowed=", ".join(sorted(present))))
+            problems.append(
+                Problem("params.stations", "no such file is read", found=key, allowed=", ".join(sorted(present)))
+            )
     for file in sorted(files, key=lambda f: int(f.epoch_tai_ns[0])):
         short = PurePath(file.source.name).name
         station = names.get(short) or names.get(file.source.name) or file.header.marker[:4].upper().strip()
         where = f"{file.source.name}:{file.header.lines}"
         if not station:
-            problems.append(Problem(where, "no MARKER NAME", remedy=f'name the station: params.stations = {{ "{short}" = "ABCD" }}'))
+            problems.append(
+                Problem(where, "no MARKER NAME", remedy=f'name the station: params.stations = {{ "{short}" = "ABCD" }}')
+            )
             continue
         for other in out.get(station, [])[:1]:
             a, b = other.header.position_m, file.header.position_m
             if a and b and np.linalg.norm(np.subtract(a, b)) > _SAME_PLACE_M:
                 problems.append(
                     Problem(
-                        where, f"station id {station} clashes", found=f"{np.linalg.norm(np.subtract(a, b)) / 1e3:.1f} km from the "
-                        f"station of that name in {other.source.name}", remedy="give one of them another id in params.stations",
+                        where,
+                        f"station id {station} clashes",
+                        found=f"{np.linalg.norm(np.subtract(a, b)) / 1e3:.1f} km from the "
+                        f"station of that name in {other.source.name}",
+                        remedy="give one of them another id in params.stations",
                     )
                 )
         out.setdefault(station, []).append(file)
     return out, problems
-
-
-def _take(station: str, grid: StationGrid, files: Sequence[ObservationFile], params: RinexParams, span: tuple[int, int]) -> _Taken:
-    """Return the rows and rejects of one station."""
-    phase = params.observable == "phase"
-    times = grid.phases.time_tai_ns
-    record = grid.file >= 0
-    names = np.array(grid.satellites)
-    asked = np.isin(names, params.satellites) if params.satellites else np.array([n[0] == "G" for n in grid.satellites], bool)
-    asked &= ~np.isin(names, params.exclude_satellites)
-    chosen = _chosen(times, grid.phases.interval_s, params.interval)
-    wanted = record & asked & (chosen & (times >= span[0]) & (times <= span[1]))[:, None]
-    present = np.isfinite(grid.phase_m if phase else grid.rate_m_s)
-    with np.errstate(invalid="ignore"):
-        weak = grid.cn0_db_hz < params.minimum_cn0
-    unreadable = _unreadable(grid, files)
-    why = np.full(record.shape, "", object)
-    why[~present] = f"no {params.observable}" + (" on both bands" if params.combination != "single" else "")
-    why[unreadable] = "not a number"
-    why[present & weak] = f"weaker than {params.minimum_cn0:g} dB-Hz"
-    usable = record & present & ~weak & ~unreadable
-    before = np.full(record.shape, -1)
-    arc = np.zeros(record.shape, int)
-    if phase:
-        arc, began = phase_arcs(grid.phases, usable)
-        steps = np.flatnonzero(chosen)
-        before[steps[1:]] = steps[:-1, None]
-        previous = np.maximum(before, 0)
-        column = np.arange(len(names))[None, :]
-        spacing = times[:, None] - times[previous]
-        longest = 1.5 * max(params.interval, grid.phases.interval_s) * 1e9
-        joined = usable & (before >= 0) & (arc[previous, column] == arc) & usable[previous, column] & (spacing <= longest)
-        loose = usable & ~joined
-        why[loose] = np.array(REASONS, object)[np.where(began[loose] > 0, began[loose], 1)]
-    else:
-        joined = usable
-        before = np.broadcast_to(np.arange(len(times))[:, None], before.shape)
-    e, s = np.nonzero(joined & wanted)
-    b = before[e, s]
-    taken = _Taken(_columns(station, grid, params, arc, e, s, b))
-    taken.columns["file"] = grid.file[e, s]
-    for k, j in zip(*np.nonzero(wanted & ~joined), strict=True):
-        taken.rejects.append((int(grid.file[k, j]), int(grid.line[k, j]), str(why[k, j])))
-    taken.rejects += _repeated(grid, files, asked, names, span)
-    return taken
-
-
-def _chosen(times: np.ndarray, recorded_s: float, interval_s: float) -> np.ndarray:
-    """Return the epochs on the wanted spacing: whole multiples of it in GPS time, to half the recording interval."""
-    if not interval_s or interval_s <= recorded_s:
-        return np.ones(len(times), bool)
-    step = round(interval_s * 1e9)
-    phase = (times - _GPS_TAI_NS) % step
-    return np.minimum(phase, step - phase) < 0.5 * recorded_s * 1e9
-
-
-def _unreadable(grid: StationGrid, files: Sequence[ObservationFile]) -> np.ndarray:
-    out = np.zeros(grid.file.shape, bool)
-    for number, file in enumerate(files):
-        if file.unreadable:
-            out |= (grid.file == number) & np.isin(grid.line, [line for line, _ in file.unreadable])
-    return out
-
-
-def _repeated(grid: StationGrid, files, asked, names, span) -> list[tuple[int, int, str]]:
-    """Return rejects for records whose satellite and epoch another file gave already."""
-    out = []
-    for number, line in grid.repeated:
-        file = files[number]
-        k = int(np.searchsorted(file.line, line))
-        inside = span[0] <= file.epoch_tai_ns[file.epoch[k]] <= span[1]
-        if inside and asked[names == file.satellite[k]].any():
-            out.append((number, line, "repeated epoch"))
-    return out
-
-
-def _columns(station: str, grid: StationGrid, params: RinexParams, arc, e, s, b) -> dict[str, np.ndarray]:
-    times = grid.phases.time_tai_ns
-    nominal = grid.nominal_hz[s]
-    more = _COMBINED_NOISE if params.combination != "single" else 1.0
-    names = np.array(grid.satellites, object)[s]
-    if params.observable == "phase":
-        length_ns = times[e] - times[b]
-        length_s = length_ns / 1e9
-        rate = (grid.phase_m[e, s] - grid.phase_m[b, s]) / length_s
-        sigma = nominal * np.sqrt(2.0) * params.phase_sigma * more / (SPEED_OF_LIGHT_M_S * length_s)
-        arcs = np.array([f"{station}/{n}/{a}" for n, a in zip(names, arc[e, s], strict=True)], object)
-        middle = times[b] + length_ns // 2
-    else:
-        length_s = np.zeros(len(e))
-        rate = grid.rate_m_s[e, s]
-        sigma = np.full(len(e), params.doppler_sigma * more)
-        arcs = np.full(len(e), "", object)
-        middle = times[e]
-    out = {
-        "station_id": np.full(len(e), station, object),
-        "emitter_id": names,
-        "time_tai_ns": middle,
-        "interval_s": length_s,
-        "received_frequency_hz": nominal * (1.0 - rate / SPEED_OF_LIGHT_M_S),
-        "received_frequency_sigma_hz": sigma,
-        "nominal_frequency_hz": nominal,
-        "phase_arc_id": arcs,
-        "cn0_db_hz": grid.cn0_db_hz[e, s],
-        "pseudorange_m": grid.code_m[e, s],
-        "pseudorange_start_m": grid.code_m[b, s],
-        "receiver_clock_s": grid.clock_s[e],
-        "receiver_clock_start_s": grid.clock_s[b],
-        "row_number": grid.line[e, s],
-    }
-    return out
 
 
 def _table(parts, params: RinexParams, notes: tuple[str, ...]) -> FrequencyTable:
@@ -330,17 +233,27 @@ def _table(parts, params: RinexParams, notes: tuple[str, ...]) -> FrequencyTable
         names = ", ".join(s.name for s in sources)
         raise InputError(
             Problem(
-                names, "no record makes a row", found=_commonest(rejects), allowed="satellites, times and signals that the files hold",
+                names,
+                "no record makes a row",
+                found=_commonest(rejects),
+                allowed="satellites, times and signals that the files hold",
                 remedy="widen params.satellites, start, stop or minimum_cn0",
             )
         )
     order = np.lexsort((rows.emitter_id.to_numpy(str), rows.station_id.to_numpy(str), rows.time_tai_ns.to_numpy()))
     said = [
         "times are receiver time: true time = tag - clock offset of the receiver"
-        + ("" if not any(f.header.clock_applied for _, fs, _ in parts for f in fs) else " (corrected in files with RCV CLOCK OFFS APPL = 1)")
+        + (
+            ""
+            if not any(f.header.clock_applied for _, fs, _ in parts for f in fs)
+            else " (corrected in files with RCV CLOCK OFFS APPL = 1)"
+        )
     ]
     return FrequencyTable(
-        rows=rows.iloc[order].reset_index(drop=True), sources=tuple(sources), rejects=tuple(rejects), notes=(*notes, *said)
+        rows=rows.iloc[order].reset_index(drop=True),
+        sources=tuple(sources),
+        rejects=tuple(rejects),
+        notes=(*notes, *said),
     )
 
 

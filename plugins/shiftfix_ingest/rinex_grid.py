@@ -106,7 +106,11 @@ def station_grid(
             mine = systems == system
             used: list[str | None] = []
             for b, (band, frequency) in enumerate(BANDS[system].items()):
-                for kind, unit in (("L", SPEED_OF_LIGHT_M_S / frequency), ("C", 1.0), ("D", -SPEED_OF_LIGHT_M_S / frequency)):
+                for kind, unit in (
+                    ("L", SPEED_OF_LIGHT_M_S / frequency),
+                    ("C", 1.0),
+                    ("D", -SPEED_OF_LIGHT_M_S / frequency),
+                ):
                     code = choose(file, system, mine, band, kind, signals)
                     used.append(code)
                     if code:
@@ -156,12 +160,14 @@ def _lacking(file: ObservationFile, system: str, used: list, combined: bool, obs
 
 
 def _strength(file: ObservationFile, code: str | None, index, row, column, cn0: np.ndarray) -> list[str]:
-    """Fill in the carrier-to-noise density ratios where the file gives them in dB-Hz; return a note when it does not."""
+    """Fill in the carrier-to-noise density ratios where they are in dB-Hz; return a note when they are not."""
     if code is None:
         return []
     values = file.values[code][index]
     if np.isfinite(values).any() and np.nanmax(values) > _MAX_CN0_DB_HZ:
-        return [f"{file.source.name}: {code} reaches {np.nanmax(values):g}, so it is not in dB-Hz; signal strengths are left out"]
+        return [
+            f"{file.source.name}: {code} reaches {np.nanmax(values):g}, so it is not in dB-Hz; strengths are left out"
+        ]
     cn0[row, column] = values
     return []
 

@@ -2,8 +2,8 @@
 
 References
 ----------
-RINEX: The Receiver Independent Exchange Format, versions 2.11 and 3.04, IGS/RTCM: record descriptions. Version 4 differs in
-navigation files only and is read like version 3.
+RINEX: The Receiver Independent Exchange Format, versions 2.11 and 3.04, IGS/RTCM: record descriptions. Version 4
+differs in navigation files only and is read like version 3.
 """
 
 from __future__ import annotations
@@ -12,7 +12,14 @@ from dataclasses import dataclass, field
 
 from shiftfix.api import Problem
 
-SCALES = {"GPS": ("GPS", 0), "GAL": ("GPS", 0), "QZS": ("GPS", 0), "GLO": ("UTC", 0), "UTC": ("UTC", 0), "BDT": ("GPS", 14)}
+SCALES = {
+    "GPS": ("GPS", 0),
+    "GAL": ("GPS", 0),
+    "QZS": ("GPS", 0),
+    "GLO": ("UTC", 0),
+    "UTC": ("UTC", 0),
+    "BDT": ("GPS", 14),
+}
 """Time system of a file to our scale and the seconds by which it runs behind that scale (BDT = GPS - 14 s)."""
 
 _LABEL = 60
@@ -72,15 +79,29 @@ def read_header(lines: list[str], name: str) -> tuple[Header, list[Problem]]:
     try:
         header.version = float(first[:9])
     except ValueError:
-        return header, [Problem(f"{name}:1", "RINEX version cannot be read", found=repr(first[:20]), allowed="2.xx, 3.xx or 4.xx")]
+        return header, [
+            Problem(f"{name}:1", "RINEX version cannot be read", found=repr(first[:20]), allowed="2.xx, 3.xx or 4.xx")
+        ]
     if not 2.0 <= header.version < 5.0:
-        return header, [Problem(f"{name}:1", "unsupported RINEX version", found=first[:9].strip(), allowed="2.xx, 3.xx or 4.xx")]
+        return header, [
+            Problem(f"{name}:1", "unsupported RINEX version", found=first[:9].strip(), allowed="2.xx, 3.xx or 4.xx")
+        ]
     kind = first[20:21].upper()
     if kind != "O":
-        kinds = {"N": "a navigation file", "G": "a GLONASS navigation file", "M": "a meteorological file", "C": "a clock file"}
+        kinds = {
+            "N": "a navigation file",
+            "G": "a GLONASS navigation file",
+            "M": "a meteorological file",
+            "C": "a clock file",
+        }
         return header, [
-            Problem(f"{name}:1", "not an observation file", found=kinds.get(kind, repr(first[20:40].strip())),
-                    allowed="OBSERVATION DATA", remedy="name the observation file in params.files (as in *.??o, *.rnx, *.crx)")
+            Problem(
+                f"{name}:1",
+                "not an observation file",
+                found=kinds.get(kind, repr(first[20:40].strip())),
+                allowed="OBSERVATION DATA",
+                remedy="name the observation file in params.files (as in *.??o, *.rnx, *.crx)",
+            )
         ]
     header.system = first[40:41].upper()
     problems: list[Problem] = []
@@ -94,7 +115,12 @@ def read_header(lines: list[str], name: str) -> tuple[Header, list[Problem]]:
             problems.append(problem)
     else:
         problems.append(
-            Problem(f"{name}:{len(lines)}", "the file ends within its header", allowed="END OF HEADER", remedy="fetch the file again")
+            Problem(
+                f"{name}:{len(lines)}",
+                "the file ends within its header",
+                allowed="END OF HEADER",
+                remedy="fetch the file again",
+            )
         )
         return header, problems
     problems += incomplete_codes(header, f"{name}:{header.lines}")
@@ -102,11 +128,17 @@ def read_header(lines: list[str], name: str) -> tuple[Header, list[Problem]]:
         header.time_system = _DEFAULT_SCALE.get(header.system, "")
         if not header.time_system:
             problems.append(
-                Problem(f"{name}:{header.lines}", "mixed file without time system", allowed=f"{', '.join(SCALES)} in TIME OF FIRST OBS")
+                Problem(
+                    f"{name}:{header.lines}",
+                    "mixed file without time system",
+                    allowed=f"{', '.join(SCALES)} in TIME OF FIRST OBS",
+                )
             )
     elif header.time_system not in SCALES:
         problems.append(
-            Problem(f"{name}:{header.lines}", "unknown time system", found=header.time_system, allowed=", ".join(SCALES))
+            Problem(
+                f"{name}:{header.lines}", "unknown time system", found=header.time_system, allowed=", ".join(SCALES)
+            )
         )
     return header, problems
 
@@ -147,7 +179,12 @@ def incomplete_codes(header: Header, where: str) -> list[Problem]:
         label = "# / TYPES OF OBSERV" if header.version < 3 else "SYS / # / OBS TYPES"
         return [Problem(where, "the header lists no observation codes", allowed=label)]
     return [
-        Problem(where, "list of observation codes incomplete", found=f"{len(codes)} codes", allowed=f"{header._open[system]}")
+        Problem(
+            where,
+            "list of observation codes incomplete",
+            found=f"{len(codes)} codes",
+            allowed=f"{header._open[system]}",
+        )
         for system, codes in header.codes.items()
         if len(codes) != header._open[system]
     ]

@@ -48,7 +48,11 @@ def choose(
     named = [w for w in wanted if w[0] in kinds and w[1:2] == band and w in present]
     if named:
         return named[0]
-    count = {c: int(np.isfinite(file.values[c][mine]).sum()) for c in dict.fromkeys(listed) if c in present and c in file.values}
+    count = {
+        c: int(np.isfinite(file.values[c][mine]).sum())
+        for c in dict.fromkeys(listed)
+        if c in present and c in file.values
+    }
     best = max(count.values(), default=0)
     return next((c for c, n in count.items() if n and n >= _ENOUGH * best), None)
 

@@ -131,14 +131,23 @@ class _Walk:
         return tai + behind_s * _NS
 
     def _shape(self) -> str:
-        return "' yy mm dd hh mm ss.sssssss  f nn'" if self.header.version < 3 else "'> yyyy mm dd hh mm ss.sssssss  f nnn'"
+        return (
+            "' yy mm dd hh mm ss.sssssss  f nn'"
+            if self.header.version < 3
+            else "'> yyyy mm dd hh mm ss.sssssss  f nnn'"
+        )
 
     def _counts(self, row: int, flag: str, count: str) -> tuple[int, int]:
         if flag.strip() in ("2", "3", "4", "5", "6") and not count.strip():
             count = "0"
         if not (flag.strip() or "0").isdigit() or not count.strip().isdigit():
             raise _Broken(
-                Problem(f"{self.name}:{row + 1}", "epoch line cannot be read", found=repr(self.lines[row][:60]), allowed=self._shape())
+                Problem(
+                    f"{self.name}:{row + 1}",
+                    "epoch line cannot be read",
+                    found=repr(self.lines[row][:60]),
+                    allowed=self._shape(),
+                )
             )
         return int(flag.strip() or "0"), int(count)
 
@@ -193,7 +202,12 @@ class _Walk:
             satellite = (name[:1].strip() or "G") + name[1:].replace(" ", "0")
             if not (satellite[0].isalpha() and satellite[1:].isdigit() and len(satellite) == 3):
                 raise _Broken(
-                    Problem(f"{self.name}:{row + 1}", "satellite cannot be read", found=repr(name), allowed="a letter and two digits")
+                    Problem(
+                        f"{self.name}:{row + 1}",
+                        "satellite cannot be read",
+                        found=repr(name),
+                        allowed="a letter and two digits",
+                    )
                 )
             self.records.append((len(self.times) - 1, satellite, at + per * k, len(self.lists) - 1))
         return at + per * count
@@ -215,8 +229,11 @@ class _Walk:
             if not (len(satellite) == 3 and satellite[0].isalpha() and satellite[1:].isdigit()):
                 raise _Broken(
                     Problem(
-                        f"{self.name}:{k + 1}", f"satellite record {k - row} of {count} expected", found=repr(self.lines[k][:40]),
-                        allowed="a letter and two digits first", remedy="the file is truncated or damaged here: fetch it again",
+                        f"{self.name}:{k + 1}",
+                        f"satellite record {k - row} of {count} expected",
+                        found=repr(self.lines[k][:40]),
+                        allowed="a letter and two digits first",
+                        remedy="the file is truncated or damaged here: fetch it again",
                     )
                 )
             self.records.append((len(self.times) - 1, satellite, k, len(self.lists) - 1))

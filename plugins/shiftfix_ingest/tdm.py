@@ -5,13 +5,14 @@ DOPPLER_INSTANTANEOUS / DOPPLER_INTEGRATED with the transmitted frequency. All o
 the reason why they make no row.
 
 The design names a library (ccsds-ndm-py) as the reader. This walk of our own replaces it: that library accepts most of
-the messages that the standard forbids, refuses a blank line before DATA_START, and gives no line numbers, which a reject
-must have. Tests compare the values of both.
+the messages that the standard forbids, refuses a blank line before DATA_START, and gives no line numbers, which a
+reject must have. Tests compare the values of both.
 
 References
 ----------
-CCSDS 503.0-B-2, Tracking Data Message, June 2020 with Corrigendum 1 (October 2021); section numbers are in the messages.
-That RECEIVE_DELAY is taken off the tag, and that corrections are added to the data, is from memory of section 3.3.2.
+CCSDS 503.0-B-2, Tracking Data Message, June 2020 with Corrigendum 1 (October 2021); section numbers are in the
+messages. That RECEIVE_DELAY is taken off the tag, and that corrections are added to the data, is from memory of
+section 3.3.2.
 """
 
 from __future__ import annotations
@@ -103,7 +104,9 @@ def read_tdm(inputs: Any, params: TdmParams, context: Any) -> dict[str, Frequenc
     for one in found:
         notes += one.rows.notes
     if params.sigma is None:
-        notes.append(f"no sigma is declared: {_DEFAULT_SIGMA_HZ:g} Hz is taken for every received frequency (params.sigma)")
+        notes.append(
+            f"no sigma is declared: {_DEFAULT_SIGMA_HZ:g} Hz is taken for every received frequency (params.sigma)"
+        )
     for text in dict.fromkeys(notes):
         context.logger.warning("%s", text)
     return {"frequencies": _table(found, params, tuple(dict.fromkeys(notes)))}

@@ -71,8 +71,12 @@ def _from_lines(source: SourceFile) -> tuple[Message, list[Problem]]:
         if place == "start":
             if line.keyword != "CCSDS_TDM_VERS":
                 return message, [
-                    Problem(where, "not a tracking data message", found=repr(f"{line.keyword} {line.value}".strip()[:60]),
-                            allowed=f"CCSDS_TDM_VERS = 2.0 as the first line that is not blank ({STANDARD}, table 3-2)")
+                    Problem(
+                        where,
+                        "not a tracking data message",
+                        found=repr(f"{line.keyword} {line.value}".strip()[:60]),
+                        allowed=f"CCSDS_TDM_VERS = 2.0 as the first line that is not blank ({STANDARD}, table 3-2)",
+                    )
                 ]
             message.version, place, comment_fits = line.value, "header", True
         elif line.kind == "comment":
@@ -82,32 +86,59 @@ def _from_lines(source: SourceFile) -> tuple[Message, list[Problem]]:
                             allowed=f"right after the version, META_START or DATA_START ({STANDARD}, 4.5.2)")
                 )
         elif line.kind == "marker":
-            wanted = {"header": "META_START", "meta": "META_STOP", "between": "DATA_START", "data": "DATA_STOP", "after": "META_START"}
+            wanted = {
+                "header": "META_START",
+                "meta": "META_STOP",
+                "between": "DATA_START",
+                "data": "DATA_STOP",
+                "after": "META_START",
+            }
             if line.keyword != wanted[place]:
-                problems.append(Problem(where, f"{line.keyword} out of place", allowed=f"{wanted[place]} ({STANDARD}, 3.1)"))
+                problems.append(
+                    Problem(where, f"{line.keyword} out of place", allowed=f"{wanted[place]} ({STANDARD}, 3.1)")
+                )
                 if line.keyword not in ("META_START", "DATA_START"):
                     continue
             if line.keyword == "META_START":
                 segment = Segment(line.number)
                 message.segments.append(segment)
-            place = {"META_START": "meta", "META_STOP": "between", "DATA_START": "data", "DATA_STOP": "after"}[line.keyword]
+            place = {"META_START": "meta", "META_STOP": "between", "DATA_START": "data", "DATA_STOP": "after"}[
+                line.keyword
+            ]
             comment_fits = line.keyword.endswith("START")
         elif line.kind == "other":
-            problems.append(Problem(where, "line is no assignment", found=line.value[:60], allowed=f"KEYWORD = value ({STANDARD}, 4.2)"))
+            problems.append(
+                Problem(
+                    where, "line is no assignment", found=line.value[:60], allowed=f"KEYWORD = value ({STANDARD}, 4.2)"
+                )
+            )
         elif place in ("header", "meta"):
             comment_fits = False
-            (message.header if place == "header" else segment.metadata).append(Entry(line.keyword, line.value, line.number))
+            (message.header if place == "header" else segment.metadata).append(
+                Entry(line.keyword, line.value, line.number)
+            )
         elif place == "data":
             comment_fits = False
             parts = line.value.split()
             if len(parts) != 2:
                 problems.append(
-                    Problem(where, f"{line.keyword} needs a time tag and one value", found=line.value, allowed=f"{STANDARD}, 3.4")
+                    Problem(
+                        where,
+                        f"{line.keyword} needs a time tag and one value",
+                        found=line.value,
+                        allowed=f"{STANDARD}, 3.4",
+                    )
                 )
                 continue
             segment.records.append(Record(line.keyword, parts[0], parts[1], line.number))
         else:
-            problems.append(Problem(where, f"{line.keyword} outside metadata and data", allowed=f"META_START ... DATA_STOP ({STANDARD}, 3.1)"))
+            problems.append(
+                Problem(
+                    where,
+                    f"{line.keyword} outside metadata and data",
+                    allowed=f"META_START ... DATA_STOP ({STANDARD}, 3.1)",
+                )
+            )
     if place == "start" and not problems:
         problems.append(Problem(f"{source.name}:1", "the file has only blank lines"))
     elif place in ("header", "meta", "between", "data"):
@@ -129,18 +160,30 @@ def _from_xml(source: SourceFile) -> tuple[Message, list[Problem]]:
     message.version = root.attributes.get("version", "")
     if root.attributes.get("id") != "CCSDS_TDM_VERS":
         problems.append(
-            Problem(f"{source.name}:{root.line}", "root element without its id", found=root.attributes.get("id", "none"),
-                    allowed=f'id="CCSDS_TDM_VERS" ({STANDARD}, 5)')
+            Problem(
+                f"{source.name}:{root.line}",
+                "root element without its id",
+                found=root.attributes.get("id", "none"),
+                allowed=f'id="CCSDS_TDM_VERS" ({STANDARD}, 5)',
+            )
         )
     header, body = root.first("header"), root.first("body")
     if [c.name for c in root.children] != ["header", "body"] or header is None or body is None:
         found = " ".join(c.name for c in root.children)
-        return message, [*problems, Problem(f"{source.name}:{root.line}", "header and body expected", found=found, allowed=f"{STANDARD}, 5")]
+        return message, [
+            *problems,
+            Problem(f"{source.name}:{root.line}", "header and body expected", found=found, allowed=f"{STANDARD}, 5"),
+        ]
     message.header = _entries(source, header, problems)
     for element in body.children:
         if [c.name for c in element.children] != ["metadata", "data"] or element.name != "segment":
             problems.append(
-                Problem(f"{source.name}:{element.line}", "segment of metadata and data expected", found=f"<{element.name}>", allowed=f"{STANDARD}, 5")
+                Problem(
+                    f"{source.name}:{element.line}",
+                    "segment of metadata and data expected",
+                    found=f"<{element.name}>",
+                    allowed=f"{STANDARD}, 5",
+                )
             )
             continue
         segment = Segment(element.line)
@@ -156,9 +199,13 @@ def _entries(source: SourceFile, parent: Element, problems: list[Problem]) -> li
         where = f"{source.name}:{child.line}"
         if child.name == "COMMENT":
             if out:
-                problems.append(Problem(where, "comment out of place", allowed=f"first in header or metadata ({STANDARD}, 4.5.2)"))
+                problems.append(
+                    Problem(where, "comment out of place", allowed=f"first in header or metadata ({STANDARD}, 4.5.2)")
+                )
         elif not child.text:
-            problems.append(Problem(where, f"{child.name} has no value", allowed=f"a value for every keyword ({STANDARD}, 4.3.1)"))
+            problems.append(
+                Problem(where, f"{child.name} has no value", allowed=f"a value for every keyword ({STANDARD}, 4.3.1)")
+            )
         else:
             out.append(Entry(child.name, child.text, child.line))
     return out
@@ -175,7 +222,12 @@ def _records(source: SourceFile, data: Element, problems: list[Problem]) -> list
         names = [c.name for c in child.children]
         if child.name != "observation" or len(names) != 2 or names[0] != "EPOCH":
             problems.append(
-                Problem(where, "observation of EPOCH and one keyword expected", found=f"<{child.name}> {' '.join(names)}", allowed=f"{STANDARD}, 5")
+                Problem(
+                    where,
+                    "observation of EPOCH and one keyword expected",
+                    found=f"<{child.name}> {' '.join(names)}",
+                    allowed=f"{STANDARD}, 5",
+                )
             )
             continue
         epoch, value = child.children

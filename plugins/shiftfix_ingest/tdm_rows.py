@@ -11,8 +11,8 @@ import numpy as np
 
 from shiftfix.api import SPEED_OF_LIGHT_M_S, tai_ns_from_texts
 from shiftfix_ingest.ccsds_values import nanoseconds, same_text, unquoted
+from shiftfix_ingest.tdm_keywords import CONVERTIBLE, stem_and_index
 from shiftfix_ingest.tdm_message import Message, Record, Segment
-from shiftfix_ingest.tdm_rules import CONVERTIBLE, stem_and_index
 
 _DOPPLER = ("DOPPLER_INSTANTANEOUS", "DOPPLER_INTEGRATED")
 Steps = Mapping[str, list[tuple[int, float]]]
@@ -114,7 +114,9 @@ def segment_rows(segment: Segment, label: str, name: str, params: Any, steps: St
         )
     good = values > 0
     if not good.all():
-        out.reject([r for r, g in zip(wanted, good, strict=True) if not g], "received frequency is not above 0 Hz at sky level")
+        out.reject(
+            [r for r, g in zip(wanted, good, strict=True) if not g], "received frequency is not above 0 Hz at sky level"
+        )
     if not doppler and not segment.get("INTEGRATION_INTERVAL"):
         out.notes.append(f"{name}: {label} has no INTEGRATION_INTERVAL; its frequencies are taken as instantaneous")
     out.notes += _notes(segment, f"{name}: {label}", params.corrections, doppler)
@@ -142,7 +144,10 @@ def _sort(segment: Segment, out: Rows) -> tuple[list[Record], bool]:
     received = [r for r in segment.records if stem_and_index(r.keyword)[0] == "RECEIVE_FREQ"]
     doppler = [r for r in segment.records if r.keyword in _DOPPLER]
     if len({r.keyword for r in doppler}) > 1:
-        out.reject([r for r in doppler if r.keyword == _DOPPLER[0]], "the segment gives DOPPLER_INTEGRATED as well, which is used")
+        out.reject(
+            [r for r in doppler if r.keyword == _DOPPLER[0]],
+            "the segment gives DOPPLER_INTEGRATED as well, which is used",
+        )
         doppler = [r for r in doppler if r.keyword == _DOPPLER[1]]
     if received and doppler:
         out.reject(doppler, "the segment gives RECEIVE_FREQ as well, which is used")
@@ -223,7 +228,9 @@ def _notes(segment: Segment, where: str, corrections: str, doppler: bool) -> lis
     value, stated = segment.get(keyword), segment.get("CORRECTIONS_APPLIED")
     out = []
     if value:
-        out.append(f"{where}: {keyword} = {value}, CORRECTIONS_APPLIED = {stated}; the rows hold the data with it {corrections}")
+        out.append(
+            f"{where}: {keyword} = {value}, CORRECTIONS_APPLIED = {stated}; rows have it {corrections}"
+        )
     rates = [r for r in segment.records if stem_and_index(r.keyword)[0] == "TRANSMIT_FREQ_RATE" and float(r.value)]
     if rates:
         out.append(f"{where}: the transmitter is ramped; the nominal frequency is that of its steps")

@@ -77,7 +77,9 @@ def _field(value: float | None, lli: int = 0) -> str:
     return f"{value:14.3f}{lli if lli else ' '}{'7'}"
 
 
-def rinex(scene: Scene, version: float = 2.11, kinds: tuple[str, ...] = tuple(V2), time_system: str = "GPS", **header) -> str:
+def rinex(
+    scene: Scene, version: float = 2.11, kinds: tuple[str, ...] = tuple(V2), time_system: str = "GPS", **header
+) -> str:
     """Return the text of an observation file."""
     old = version < 3
     names = V2 if old else V3
@@ -92,7 +94,11 @@ def rinex(scene: Scene, version: float = 2.11, kinds: tuple[str, ...] = tuple(V2
     else:
         lines.append(_header(f"G  {len(codes):3d}" + "".join(f" {c}" for c in codes), "SYS / # / OBS TYPES"))
     lines.append(_header(f"{scene.interval:10.3f}", "INTERVAL"))
-    lines.append(_header(f"  2026     3     1     6{scene.minute_0:6d}{scene.second_0:13.7f}     {time_system}", "TIME OF FIRST OBS"))
+    lines.append(
+        _header(
+            f"  2026     3     1     6{scene.minute_0:6d}{scene.second_0:13.7f}     {time_system}", "TIME OF FIRST OBS"
+        )
+    )
     for label, text in header.items():
         lines.append(_header(text, label.replace("_", " ")))
     lines.append(_header("", "END OF HEADER"))

@@ -10,9 +10,9 @@ import logging
 import numpy as np
 import pytest
 from rinex_files import F1, F2, C, Scene, at, noise, rinex, shifted
-from shiftfix_ingest.rinex import RinexParams, read_rinex
 
 from shiftfix.api import InputError, tai_ns_from_calendar
+from shiftfix_ingest.rinex import RinexParams, read_rinex
 
 MILLISECOND_M = 299792.458
 
@@ -90,7 +90,9 @@ def test_versions_compressions_and_line_ends_agree(read):
 
 def test_more_than_ten_codes_and_blank_lines(read):
     kinds = ("D1", "D2", "S1", "S2", "P1", "P2", "L1", "L2")
-    scene = Scene(edits=[at(2, "G17", D1=None, D2=None, S1=None, S2=None, P1=None), at(3, "G28", P2=None, L1=None, L2=None)])
+    scene = Scene(
+        edits=[at(2, "G17", D1=None, D2=None, S1=None, S2=None, P1=None), at(3, "G28", P2=None, L1=None, L2=None)]
+    )
     table = read(rinex(scene, 2.11, kinds * 1))
     assert reasons(table) == {"first of an arc": 4, "no phase": 1, "first of an arc after a gap": 1}
     assert np.isnan(row(table, "G17", 1).pseudorange_m)
@@ -317,7 +319,13 @@ def test_account_holds_whatever_is_missing(read):
             assert source.rows_read == records
             assert source.rows_read == source.rows_accepted + source.rows_rejected
             assert source.rows_accepted == len(table) > 0 and source.rows_rejected == len(table.rejects)
-            assert len({(r.source, r.row_number) for r in table.rejects} | set(zip(table.rows.source, table.rows.row_number, strict=True))) == records
+            assert (
+                len(
+                    {(r.source, r.row_number) for r in table.rejects}
+                    | set(zip(table.rows.source, table.rows.row_number, strict=True))
+                )
+                == records
+            )
 
 
 def _announced(text, version):

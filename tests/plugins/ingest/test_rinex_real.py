@@ -1,8 +1,8 @@
 """Real receiver files against precise orbits: phase differences are right to 1 mm/s.
 
-The prediction is made here from the SP3 text alone (polynomial through ten epochs, light time, Earth rotation, satellite
-clock with its periodic term, a cosecant troposphere), with nothing of the program but the reader under test. One common
-clock rate per epoch is removed as the median over the satellites.
+The prediction is made here from the SP3 text alone (polynomial through ten epochs, light time, Earth rotation,
+satellite clock with its periodic term, a cosecant troposphere), with nothing of the program but the reader under
+test. One common clock rate per epoch is removed as the median over the satellites.
 """
 
 from __future__ import annotations
@@ -11,6 +11,7 @@ import numpy as np
 import pandas as pd
 import pytest
 from scipy.interpolate import BarycentricInterpolator
+
 from shiftfix_ingest.rinex import RinexParams, read_rinex
 
 C = 299792458.0
@@ -25,7 +26,9 @@ def orbits(folder):
         for line in path.read_text().splitlines():
             if line.startswith("*"):
                 y, mo, d, h, mi, s = line[1:].split()
-                now = (pd.Timestamp(int(y), int(mo), int(d), int(h), int(mi)) - pd.Timestamp(1970, 1, 1)).total_seconds()
+                now = (
+                    pd.Timestamp(int(y), int(mo), int(d), int(h), int(mi)) - pd.Timestamp(1970, 1, 1)
+                ).total_seconds()
                 now += float(s) + GPS_TAI_S
             elif line.startswith("PG"):
                 values = line[4:].split()[:4]

@@ -7,9 +7,9 @@ import logging
 
 import numpy as np
 import pytest
-from shiftfix_ingest.sp3 import Sp3Params, read_sp3
 
 from shiftfix.api import InputError, tai_ns_from_calendar
+from shiftfix_ingest.sp3 import Sp3Params, read_sp3
 
 
 def sp3(epochs, version="c", kind="P", scale="GPS", announced=None, start="2026  3  1  0  0  0.00000000"):
@@ -136,9 +136,15 @@ def test_all_unusable_files_are_named_at_once(tmp_path, context):
         read_sp3({}, Sp3Params(files=tuple(tmp_path / n for n in [*files, "absent.sp3"])), context)
     text = str(caught.value)
     for expected in (
-        "nav.26n:1: not an SP3 file", "cut.sp3:14: the file is truncated", "short.sp3:12: number of epochs does not agree",
-        "96 epochs and an EOF line", "number.sp3:13: position record cannot be read", "date.sp3:12: epoch cannot be read",
-        "scale.sp3:5: unknown time system", "bin.sp3:1: the file is binary", "none.sp3: the file is empty",
+        "nav.26n:1: not an SP3 file",
+        "cut.sp3:14: the file is truncated",
+        "short.sp3:12: number of epochs does not agree",
+        "96 epochs and an EOF line",
+        "number.sp3:13: position record cannot be read",
+        "date.sp3:12: epoch cannot be read",
+        "scale.sp3:5: unknown time system",
+        "bin.sp3:1: the file is binary",
+        "none.sp3: the file is empty",
         "absent.sp3: no such file",
     ):
         assert expected in text, expected

@@ -6,19 +6,23 @@ import gzip
 
 import numpy as np
 import pytest
-from shiftfix_ingest.tdm import TdmParams, read_tdm
 
 from shiftfix.api import InputError, tai_ns_from_utc
+from shiftfix_ingest.tdm import TdmParams, read_tdm
 
 C = 299792458.0
 META = {
-    "TIME_SYSTEM": "UTC", "PARTICIPANT_1": "Cape Merrow", "PARTICIPANT_2": "KITE-4", "MODE": "SEQUENTIAL", "PATH": "2,1",
+    "TIME_SYSTEM": "UTC", "PARTICIPANT_1": "Cape Merrow", "PARTICIPANT_2": "KITE-4", "MODE": "SEQUENTIAL",
+    "PATH": "2,1",
     "INTEGRATION_INTERVAL": "10.0", "INTEGRATION_REF": "MIDDLE",
 }  # fmt: skip
 ORDER = (
-    "TIME_SYSTEM", "START_TIME", "STOP_TIME", "PARTICIPANT_1", "PARTICIPANT_2", "PARTICIPANT_3", "MODE", "PATH", "PATH_1", "PATH_2",
-    "RECEIVE_BAND", "TIMETAG_REF", "INTEGRATION_INTERVAL", "INTEGRATION_REF", "FREQ_OFFSET", "TRANSMIT_DELAY_1", "TRANSMIT_DELAY_2",
-    "RECEIVE_DELAY_1", "RECEIVE_DELAY_2", "DATA_QUALITY", "CORRECTION_DOPPLER", "CORRECTION_RECEIVE", "CORRECTIONS_APPLIED",
+    "TIME_SYSTEM", "START_TIME", "STOP_TIME", "PARTICIPANT_1", "PARTICIPANT_2", "PARTICIPANT_3", "MODE", "PATH",
+    "PATH_1", "PATH_2",
+    "RECEIVE_BAND", "TIMETAG_REF", "INTEGRATION_INTERVAL", "INTEGRATION_REF", "FREQ_OFFSET", "TRANSMIT_DELAY_1",
+    "TRANSMIT_DELAY_2",
+    "RECEIVE_DELAY_1", "RECEIVE_DELAY_2", "DATA_QUALITY", "CORRECTION_DOPPLER", "CORRECTION_RECEIVE",
+    "CORRECTIONS_APPLIED",
 )  # fmt: skip
 DATA = (
     ("TRANSMIT_FREQ_2", "2026-03-01T06:00:00", "437150000.0"),
@@ -37,14 +41,26 @@ def segment(data=DATA, **meta):
 
 
 def kvn(*segments):
-    head = ["CCSDS_TDM_VERS = 2.0", "COMMENT made for a test", "CREATION_DATE = 2026-03-02T00:00:00Z", "ORIGINATOR = VELDANE"]
+    head = [
+        "CCSDS_TDM_VERS = 2.0",
+        "COMMENT made for a test",
+        "CREATION_DATE = 2026-03-02T00:00:00Z",
+        "ORIGINATOR = VELDANE",
+    ]
     return "\n".join([*head, *(line for s in segments for line in s)]) + "\n"
 
 
 def xml(*segments, prefix=""):
     p = prefix
-    out = ['<?xml version="1.0" encoding="UTF-8"?>', f'<{p}tdm xmlns:ndm="urn:ccsds:schema:ndmxml" id="CCSDS_TDM_VERS" version="2.0">']
-    out += [f"<{p}header>", f"<{p}CREATION_DATE>2026-03-02T00:00:00Z</{p}CREATION_DATE>", f"<{p}ORIGINATOR>VELDANE</{p}ORIGINATOR>"]
+    out = [
+        '<?xml version="1.0" encoding="UTF-8"?>',
+        f'<{p}tdm xmlns:ndm="urn:ccsds:schema:ndmxml" id="CCSDS_TDM_VERS" version="2.0">',
+    ]
+    out += [
+        f"<{p}header>",
+        f"<{p}CREATION_DATE>2026-03-02T00:00:00Z</{p}CREATION_DATE>",
+        f"<{p}ORIGINATOR>VELDANE</{p}ORIGINATOR>",
+    ]
     out += [f"</{p}header>", f"<{p}body>"]
     for lines in segments:
         out += [f"<{p}segment>", f"<{p}metadata>"]
@@ -58,7 +74,12 @@ def xml(*segments, prefix=""):
                 out += [f"</{p}data>", f"</{p}segment>"]
             elif " " in value and "T06:" in value:
                 tag, number = value.split()
-                out += [f"<{p}observation>", f"<{p}EPOCH>{tag}</{p}EPOCH>", f"<{p}{keyword}>{number}</{p}{keyword}>", f"</{p}observation>"]
+                out += [
+                    f"<{p}observation>",
+                    f"<{p}EPOCH>{tag}</{p}EPOCH>",
+                    f"<{p}{keyword}>{number}</{p}{keyword}>",
+                    f"</{p}observation>",
+                ]
             else:
                 out.append(f"<{p}{keyword}>{value}</{p}{keyword}>")
     return "\n".join([*out, f"</{p}body>", f"</{p}tdm>"]) + "\n"
@@ -94,14 +115,18 @@ def test_values_places_and_account(read):
     source = table.sources[0]
     assert (source.rows_read, source.rows_accepted, source.rows_rejected) == (4, 2, 2)
     assert reasons(table) == [
-        "PC_N0 stands beside the received frequency; it is no row", "TRANSMIT_FREQ gives the nominal frequency; it is no row"
+        "PC_N0 stands beside the received frequency; it is no row",
+        "TRANSMIT_FREQ gives the nominal frequency; it is no row",
     ]
     assert [text.splitlines()[r.row_number - 1] for r in table.rejects] == [r.text for r in table.rejects]
 
 
 @pytest.mark.parametrize("prefix", ["", "ndm:"])
 def test_xml_of_both_flavours_equals_kvn(read, prefix):
-    parts = (segment(), segment(FREQ_OFFSET="437000000", PATH="2,1", data=(("RECEIVE_FREQ_1", "2026-03-01T06:01:00", "-158912.25"),)))
+    parts = (
+        segment(),
+        segment(FREQ_OFFSET="437000000", PATH="2,1", data=(("RECEIVE_FREQ_1", "2026-03-01T06:01:00", "-158912.25"),)),
+    )
     lines, tree = read(kvn(*parts)), read(xml(*parts, prefix=prefix))
     assert lines.rows.drop(columns="row_number").equals(tree.rows.drop(columns="row_number"))
     text = xml(*parts, prefix=prefix).splitlines()
@@ -156,7 +181,10 @@ def test_day_of_year_and_leap_second(read):
 
 
 def test_offset_is_added_in_decimals(read):
-    data = (("RECEIVE_FREQ_1", "2026-03-01T06:00:10", "-0.30000000000000004"), ("RECEIVE_FREQ_1", "2026-03-01T06:00:20", "60255.16982"))
+    data = (
+        ("RECEIVE_FREQ_1", "2026-03-01T06:00:10", "-0.30000000000000004"),
+        ("RECEIVE_FREQ_1", "2026-03-01T06:00:20", "60255.16982"),
+    )
     table = read(kvn(segment(data, FREQ_OFFSET="8427221784.667")))
     # Sums made by hand; floats added one by one would also be off by an ulp (9.5e-7 Hz) in places.
     assert table.rows.received_frequency_hz.tolist() == [8427221784.367, 8427282039.83682]
@@ -166,7 +194,12 @@ def test_corrections(read):
     yes = segment(CORRECTION_RECEIVE="12.5", CORRECTIONS_APPLIED="YES")
     no = segment(CORRECTION_RECEIVE="12.5", CORRECTIONS_APPLIED="NO")
     logged = 437158912.4375
-    for lines, choice, expected in ((yes, "applied", 0), (no, "applied", 12.5), (yes, "undone", -12.5), (no, "undone", 0)):
+    for lines, choice, expected in (
+        (yes, "applied", 0),
+        (no, "applied", 12.5),
+        (yes, "undone", -12.5),
+        (no, "undone", 0),
+    ):
         table = read(kvn(lines), corrections=choice)
         assert table.rows.received_frequency_hz[0] == logged + expected
         assert any("CORRECTION_RECEIVE = 12.5" in n and choice in n for n in table.notes)
@@ -194,8 +227,14 @@ def test_degraded_data_are_weighted_down(read):
 
 
 def test_nominal_frequency_steps_from_another_segment(read):
-    steps = segment((("TRANSMIT_FREQ_2", "2026-03-01T06:00:00", "437150000.0"), ("TRANSMIT_FREQ_2", "2026-03-01T06:00:15", "437150100.0")),
-                    INTEGRATION_INTERVAL=None, INTEGRATION_REF=None)
+    steps = segment(
+        (
+            ("TRANSMIT_FREQ_2", "2026-03-01T06:00:00", "437150000.0"),
+            ("TRANSMIT_FREQ_2", "2026-03-01T06:00:15", "437150100.0"),
+        ),
+        INTEGRATION_INTERVAL=None,
+        INTEGRATION_REF=None,
+    )
     table = read(kvn(steps, segment(DATA[1:])))
     assert table.rows.nominal_frequency_hz.tolist() == [437150000.0, 437150100.0]
     alone = read(kvn(segment(DATA[1:])))
@@ -215,7 +254,8 @@ def test_other_paths_are_refused_segment_by_segment(read):
         (segment(DATA[1:], TIMETAG_REF="TRANSMIT"), "the time of reception is not known"),
         (segment(DATA[1:], TIME_SYSTEM="TDB"), "TIME_SYSTEM = TDB cannot be converted"),
         (segment(DATA[1:], MODE=None, PATH=None), "no MODE and PATH"),
-        (segment((("RECEIVE_FREQ", "2026-03-01T06:00:10", "8.5"),), MODE="SINGLE_DIFF", PATH=None, PATH_1="1,2", PATH_2="2,1", RECEIVE_BAND="X"),
+        (segment((("RECEIVE_FREQ", "2026-03-01T06:00:10", "8.5"),), MODE="SINGLE_DIFF", PATH=None, PATH_1="1,2",
+        PATH_2="2,1", RECEIVE_BAND="X"),
          "differenced data are not read"),
         (segment((("RANGE", "2026-03-01T06:00:10", "80452.75"),)), "RANGE is not a received frequency"),
     ):  # fmt: skip
@@ -232,7 +272,9 @@ def test_negative_sky_frequency_is_a_reject(read):
 def test_missing_sigma_and_interval_are_said(read):
     table = read(kvn(segment(INTEGRATION_INTERVAL=None, INTEGRATION_REF=None)), sigma=None)
     assert set(table.rows.received_frequency_sigma_hz) == {1.0} and set(table.rows.interval_s) == {0.0}
-    assert any("no sigma is declared" in n for n in table.notes) and any("taken as instantaneous" in n for n in table.notes)
+    assert any("no sigma is declared" in n for n in table.notes) and any(
+        "taken as instantaneous" in n for n in table.notes
+    )
 
 
 def test_line_ends_blank_lines_and_packing(read):
@@ -255,8 +297,13 @@ def test_same_file_twice(read):
 def test_all_unusable_files_are_named_at_once(tmp_path, context):
     good = kvn(segment())
     files = {
-        "opm.kvn": good.replace("TDM", "OPM"), "cut.tdm": "\n".join(good.splitlines()[:-1]), "blank.tdm": "\n\n",
-        "bin.tdm": "CCSDS\0\0", "none.tdm": "", "broken.xml": xml(segment())[:-30], "rinex.26o": "     2.11  OBSERVATION DATA\n",
+        "opm.kvn": good.replace("TDM", "OPM"),
+        "cut.tdm": "\n".join(good.splitlines()[:-1]),
+        "blank.tdm": "\n\n",
+        "bin.tdm": "CCSDS\0\0",
+        "none.tdm": "",
+        "broken.xml": xml(segment())[:-30],
+        "rinex.26o": "     2.11  OBSERVATION DATA\n",
         "other.xml": "<oem id='CCSDS_OEM_VERS' version='2.0'></oem>",
         "entity.xml": '<!DOCTYPE tdm [<!ENTITY a "b">]><tdm id="CCSDS_TDM_VERS" version="2.0"/>',
     }
@@ -266,9 +313,15 @@ def test_all_unusable_files_are_named_at_once(tmp_path, context):
         read_tdm({}, TdmParams(files=tuple(tmp_path / n for n in [*files, "absent.tdm"])), context)
     text = str(caught.value)
     for expected in (
-        "opm.kvn:1: not a tracking data message", "cut.tdm:18: the message ends without DATA_STOP", "blank.tdm:1: the file has only blank",
-        "bin.tdm:1: the file is binary", "none.tdm: the file is empty", "broken.xml:35: not well-formed XML",
-        "rinex.26o:1: not a tracking data message", "other.xml:1: another kind of message", "entity.xml:1: a document type declaration",
+        "opm.kvn:1: not a tracking data message",
+        "cut.tdm:18: the message ends without DATA_STOP",
+        "blank.tdm:1: the file has only blank",
+        "bin.tdm:1: the file is binary",
+        "none.tdm: the file is empty",
+        "broken.xml:35: not well-formed XML",
+        "rinex.26o:1: not a tracking data message",
+        "other.xml:1: another kind of message",
+        "entity.xml:1: a document type declaration",
         "absent.tdm: no such file",
     ):
         assert expected in text, expected
@@ -278,7 +331,14 @@ def test_a_hundred_thousand_records(read):
     """0.05 s in the Rust library; here a few seconds at most, with every rule checked."""
     import time
 
-    data = [("RECEIVE_FREQ_1", f"2026-03-01T{k // 3600 % 24:02d}:{k // 60 % 60:02d}:{k % 60:02d}.{k // 86400}", f"{437158912.4375 + k}") for k in range(86400)]
+    data = [
+        (
+            "RECEIVE_FREQ_1",
+            f"2026-03-01T{k // 3600 % 24:02d}:{k // 60 % 60:02d}:{k % 60:02d}.{k // 86400}",
+            f"{437158912.4375 + k}",
+        )
+        for k in range(86400)
+    ]
     text = kvn(segment(data))
     begin = time.perf_counter()
     assert len(read(text)) == 86400

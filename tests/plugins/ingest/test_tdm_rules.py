@@ -1,11 +1,12 @@
+# ruff: noqa: E501 - one broken rule a line
 """The must-reject list of the tracking data message: each broken rule is named with line and section."""
 
 from __future__ import annotations
 
 import pytest
-from shiftfix_ingest.tdm import TdmParams, read_tdm
 
 from shiftfix.api import InputError
+from shiftfix_ingest.tdm import TdmParams, read_tdm
 
 GOOD = """CCSDS_TDM_VERS = 2.0
 COMMENT made for a test
@@ -157,6 +158,10 @@ def test_xml_follows_the_same_rules(tmp_path, context):
     with pytest.raises(InputError) as caught:
         read_tdm({}, TdmParams(files=(path,)), context)
     found = str(caught.value)
-    for expected in ("log.xml:7: MODE has a value", "log.xml:8: PATH names a participant", "log.xml:10: RECEIVE_FREQ_1 is not a number",
-                     "log.xml:11: observation of EPOCH and one keyword"):
+    for expected in (
+        "log.xml:7: MODE has a value",
+        "log.xml:8: PATH names a participant",
+        "log.xml:10: RECEIVE_FREQ_1 is not a number",
+        "log.xml:11: observation of EPOCH and one keyword",
+    ):
         assert expected in found, expected
