@@ -119,7 +119,7 @@ def _read_file(file: SourceFile, params: DelimitedParams) -> tuple[pd.DataFrame 
     names = [n.strip().strip('"') for n in head.split(separator)] if head else []
     width = len(names) or len(lines[keep[0]].split(separator))
     where, problems = {}, []
-    for role, column in params.columns.items():
+    for role, column in {**params.columns, **{f"extra:{n}": c for n, c in params.extra.items()}}.items():
         if isinstance(column, int) and 1 <= column <= width:
             where[role] = column - 1
         elif column in names:
@@ -224,6 +224,8 @@ def _convert(file, fields, numbers, where, params, lines):
             "row_number": numbers[good],
         }
     )
+    for name in params.extra:
+        rows[name] = _number(fields.iloc[:, where[f"extra:{name}"]], params.decimal)[good]
     for role, name in (("cn0", "cn0_db_hz"), ("rate", "frequency_rate_hz_s")):
         if role in values:
             rows[name] = values[role][good]

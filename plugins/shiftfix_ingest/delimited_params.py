@@ -15,6 +15,7 @@ class DelimitedParams:
 
     files: tuple = param("text files, plain or gzip", path="files")
     columns: dict = param("what stands where: role = header name, or number from 1 without a header", default={})
+    extra: dict = param("further columns that pass through: name with unit suffix = header name", default={})
     units: dict = param("unit of a column by role, such as { frequency = \"kHz\" }", default={})
     time_scale: str = param("scale of the time column", default="", choices=("UTC", "TAI", "TT", "GPS"))
     time_format: str = param("iso: calendar or day-of-year text; gps: week and seconds of week", default="iso", choices=("iso", "gps"))

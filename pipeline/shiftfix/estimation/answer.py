@@ -21,9 +21,10 @@ from shiftfix.estimation.observations import Observations
 from shiftfix.estimation.receivers import Receiver
 from shiftfix.estimation.widening import Widened, widen
 
-UNSEEN_SHARE = 0.05
+UNSEEN_SHARE = {"GCRS": 0.05, "ITRS": 0.25}
 """A direction counts as not seen when its 1-sigma exceeds this share of the distance to the nearest receiver: there the
-lines of sight turn so much within the error that the linear covariance says nothing."""
+lines of sight turn so much within the error that the linear covariance says nothing. An orbit has the tighter limit:
+its curve bends with the whole state, not with the line of sight alone."""
 
 
 @dataclass(frozen=True)
@@ -267,7 +268,7 @@ def _unseen(fit: Fit, bound: BoundMotion, widened: Widened) -> tuple[str, ...]:
         east /= max(np.linalg.norm(east), 1e-12)
         axes, names = np.array([east, np.cross(up, east), up]), ("east", "north", "up")
     values, vectors = np.linalg.eigh(covariance[:3, :3])
-    limit = UNSEEN_SHARE * distance
+    limit = UNSEEN_SHARE[bound.frame] * distance
     words = []
     for value, vector in zip(values[::-1], vectors.T[::-1], strict=True):
         sigma = np.sqrt(max(value, 0.0))
