@@ -84,6 +84,8 @@ def test_blocks_become_segments_and_useable_spans_are_kept(read, caplog):
     second = block(states(2), START_TIME="2026-03-01T06:02:00", STOP_TIME="2026-03-01T06:05:00")
     table = read(oem(first, second))
     assert table.rows.segment_1.tolist() == [0, 0, 1, 1, 1, 1]
+    minutes = [(t - tai_ns_from_utc("2026-03-01T06:00:00Z")) / 60e9 for t in table.rows.time_tai_ns]
+    assert minutes == [1.0, 2.0, 2.0, 3.0, 4.0, 5.0]
     assert table.sources[0].rows_read == 8 and table.sources[0].rows_rejected == 2
     assert "2 states outside the useable spans" in caplog.text
     assert len(read(oem(first, second), span="all")) == 8

@@ -267,6 +267,12 @@ def test_longer_interval_is_the_mean_of_the_short_ones(read):
     assert long.sources[0].rows_read == 5 * 4
 
 
+def test_longer_interval_begins_at_whole_multiples_of_gps_time(read):
+    table = read(rinex(Scene(epochs=130, interval=1.0, second_0=20.0)), interval=60.0)
+    mine = table.rows[table.rows.emitter_id == "G17"]
+    assert mine.time_tai_ns.tolist() == [tai_ns_from_calendar(2026, 3, 1, 6, 1, 30, "GPS")]
+
+
 def test_time_system_of_the_header_is_honoured(read):
     utc = read(rinex(Scene(), 3.04, time_system="GLO"))
     gps = read(rinex(Scene(), 3.04))

@@ -305,6 +305,7 @@ def test_all_unusable_files_are_named_at_once(tmp_path, context):
         "broken.xml": xml(segment())[:-30],
         "rinex.26o": "     2.11  OBSERVATION DATA\n",
         "other.xml": "<oem id='CCSDS_OEM_VERS' version='2.0'></oem>",
+        "type.xml": '<!DOCTYPE tdm><tdm id="CCSDS_TDM_VERS" version="2.0"></tdm>',
         "entity.xml": '<!DOCTYPE tdm [<!ENTITY a "b">]><tdm id="CCSDS_TDM_VERS" version="2.0"/>',
     }
     for name, text in files.items():
@@ -322,7 +323,7 @@ def test_all_unusable_files_are_named_at_once(tmp_path, context):
         "rinex.26o:1: not a tracking data message",
         "other.xml:1: another kind of message",
         "entity.xml:1: a document type declaration",
-        "absent.tdm: no such file",
+        "absent.tdm: no such file", "type.xml:1: a document type declaration",
     ):
         assert expected in text, expected
 

@@ -66,6 +66,7 @@ BROKEN = {
     "mode unknown": ("= SEQUENTIAL", "= SERIAL", 10, "MODE has a value outside", "table 3-3"),
     "delay negative": ("= 0.000077", "= -0.000077", 14, "RECEIVE_DELAY_1 has a wrong value", "table 3-3"),
     "transmit negative": ("437150000.0", "-437150000.0", 19, "TRANSMIT_FREQ_2 has a wrong value", "3.5"),
+    "angle": ("RECEIVE_FREQ_1 = 2026-03-01T06:00:20 437158411.28", "ANGLE_1 = 2026-03-01T06:00:20 360.0", 21, "ANGLE_1 has a wrong value", "3.5"),
     "nan": ("437158912.4375", "NaN", 20, "RECEIVE_FREQ_1 is not a number", "4.3.5"),
     "infinite": ("437158912.4375", "Inf", 20, "RECEIVE_FREQ_1 is not a number", "4.3.5"),
     "decimal comma": ("437158912.4375", "437158912,4375", 20, "RECEIVE_FREQ_1 is not a number", "4.3.5"),
