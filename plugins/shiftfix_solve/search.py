@@ -68,9 +68,13 @@ def search(inputs, params, context):
     context.progress(0.3, f"{len(candidates)} candidates")
     states, cost = refine(
         data, bound.states_batch, candidates, bound.motion.scales, priors=tuple(bound.priors),
-        schedule=((2, 240), (4, 100), (10, 40), (20, max(params.keep, 16))), check_cancelled=context.check_cancelled,
+        check_cancelled=context.check_cancelled,
     )
-    states, cost = states[: params.keep], cost[: params.keep]
+    if not len(states):
+        raise InputError(Problem(f"node {context.node}", "no candidate of the search can be evaluated", remedy="check region, height and times"))
+    # A start far above the best is no basin that could fit; a mirror differs by some tens at most.
+    good = cost <= 10.0 * cost[0] + 400.0
+    states, cost = states[good][: params.keep], cost[good][: params.keep]
     rms = np.sqrt(cost / max(len(data.z), 1))
     weight = np.exp(-0.5 * np.minimum((cost - cost.min()) / max(cost.min() / max(len(data.z), 1), 1.0), 700.0))
     starts = StartTable(

@@ -23,12 +23,24 @@ def distinct_fits(fits: Sequence[Fit], tolerance_sigma: float = 1.0) -> list[Fit
 
 
 def _same(a: Fit, b: Fit, tolerance: float) -> bool:
-    difference = a.parameters - b.parameters
+    difference = _canonical(a) - _canonical(b)
     p = difference.size
     if np.all(np.abs(difference) < 1e-6 * a.motion.scales):
         return True
     sigma = np.sqrt(np.maximum(np.diag(a.covariance)[:p], np.diag(b.covariance)[:p]))
     return bool(np.all(np.abs(difference) < tolerance * sigma + 1e-9 * a.motion.scales))
+
+
+def _canonical(fit: Fit) -> np.ndarray:
+    """Return the parameters with latitude and longitude in their usual ranges: a fit may have gone over a pole or round."""
+    out = fit.parameters.copy()
+    names = fit.motion.parameter_names
+    if "latitude_rad" in names and "longitude_rad" in names:
+        i, j = names.index("latitude_rad"), names.index("longitude_rad")
+        latitude, longitude = out[i], out[j]
+        out[i] = np.arcsin(np.sin(latitude))
+        out[j] = np.arctan2(np.cos(latitude) * np.sin(longitude), np.cos(latitude) * np.cos(longitude))
+    return out
 
 
 def odds(fits: Sequence[Fit], noise_scale: float = 1.0) -> np.ndarray:

@@ -143,7 +143,7 @@ def solve_arc(
     # A solution that does not move nor is moved past explains nothing: then the curves are flat at every station.
     if flat and null_cost - best.cost < 30.0 * spread**2:
         text = (
-            "not locatable by this method: the received frequency is constant at every station (no Doppler shift is seen); "
+            "the received frequency is constant at every station (no Doppler shift is seen); "
             "an emitter at rest relative to fixed stations can be anywhere"
         )
         return _refused("not locatable by this method", text, ("position, all directions",), None, ())
@@ -275,10 +275,11 @@ def _unseen(fit: Fit, bound: BoundMotion, widened: Widened) -> tuple[str, ...]:
         if sigma > limit or not np.isfinite(sigma):
             # What moves together with the position tells the user what to add.
             speed = covariance[3:, :3] @ vector / max(value, 1e-300) * sigma
-            words.append(
-                "position along " + describe_direction(vector * sigma, axes, names, "m, 1 sigma")
-                + (" moving together with velocity along " + describe_direction(speed, axes, names, "m/s") if np.linalg.norm(speed) > 0 else "")
-            )
+            size = "m, 1 sigma" if sigma < distance else "m, 1 sigma: as good as unknown"
+            text = "position along " + describe_direction(vector * sigma, axes, names, size)
+            if np.linalg.norm(speed) > 0:
+                text += ", together with velocity along " + describe_direction(speed, axes, names, "m/s")
+            words.append(text)
     return tuple(words)
 
 

@@ -117,7 +117,7 @@ def refine(
     scales: np.ndarray,
     *,
     priors: tuple = (),
-    schedule: tuple[tuple[int, int], ...] = ((8, 80), (10, 30), (15, 16)),
+    schedule: tuple[tuple[int, int], ...] = ((3, 200), (5, 100), (10, 40), (15, 16)),
     check_cancelled: Callable[[], None] = lambda: None,
 ) -> tuple[np.ndarray, np.ndarray]:
     """Return refined candidates and their costs, best first.
@@ -171,9 +171,9 @@ def refine(
             damping = np.clip(np.where(better, damping * 0.2, damping * 6.0), 1e-9, 1e9)
             if (gain < 1e-4 * (1.0 + cost)).all():
                 break
-        keep = np.argsort(cost, kind="stable")[:survivors]
-        x, r, cost, damping = x[keep], r[keep], cost[keep], damping[keep]
-        keep = distinct(x, scales, 1e-3)
+        order = np.argsort(cost, kind="stable")
+        # One of each basin goes on: without this a wide basin's many candidates crowd a weaker one (a mirror) out.
+        keep = order[distinct(x[order], scales, 0.1, survivors)]
         x, r, cost, damping = x[keep], r[keep], cost[keep], damping[keep]
     finite = np.isfinite(cost)
     return x[finite], cost[finite]
@@ -184,10 +184,13 @@ def _cost(r: np.ndarray) -> np.ndarray:
     return np.where(np.isfinite(cost), cost, np.inf)
 
 
-def distinct(candidates: np.ndarray, scales: np.ndarray, tolerance: float) -> np.ndarray:
-    """Return the indices of candidates that differ by more than `tolerance` x scales from all better ones."""
+def distinct(candidates: np.ndarray, scales: np.ndarray, tolerance: float, limit: int) -> np.ndarray:
+    """Return the indices of at most `limit` candidates that differ by more than `tolerance` x scales from better ones."""
+    scaled = candidates / scales
     kept: list[int] = []
-    for k, candidate in enumerate(candidates):
-        if all(np.abs((candidate - candidates[i]) / scales).max() > tolerance for i in kept):
+    for k in range(len(scaled)):
+        if not kept or (np.abs(scaled[kept] - scaled[k]).max(1) > tolerance).all():
             kept.append(k)
+            if len(kept) == limit:
+                break
     return np.array(kept, dtype=int)
