@@ -13,7 +13,7 @@ import numpy as np
 
 from shiftfix.estimation.forward import ForwardModel
 from shiftfix.physics.constants import L_G, SPEED_OF_LIGHT_M_S
-from shiftfix.physics.doppler import C2, _lost
+from shiftfix.physics.doppler import C2
 from shiftfix.physics.lighttime import Link
 from shiftfix.physics.motion.states import Path, States
 
@@ -41,12 +41,11 @@ def known_log_ratio(
     if clock_s is None:
         return forward.predict(path, link)
     a, b = forward.first, forward.last
-    interval = np.where(forward.mean, forward.rows.interval_s, 1.0)
+    interval = forward.interval_s
     change = link.light_time_s[b] - link.light_time_s[a]
     clock = clock_s(link.emission_times_s)
-    receivers = tuple(States(*(p[i] for p in forward.receiver)) for i in (a, b))
     # Coordinate time is TT here: an ideal clock on the geoid keeps it (L_G takes the potential there off).
-    lost = _lost(*receivers, interval) - L_G * interval
+    lost = forward.receiver_lost_s - L_G * interval
     out = np.log1p((lost - change + clock[b] - clock[a]) / (interval - lost))
     if forward.media.troposphere:
         out = out - forward.delay_rate(forward.slant_delay(link), link)

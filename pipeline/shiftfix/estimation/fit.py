@@ -152,7 +152,8 @@ def fit_arc(
     settings = settings or FitSettings()
     forward = forward or ForwardModel(rows, receivers, settings.media)
     start = np.asarray(start, float)
-    lag = float(np.median(forward.links(motion.at(start)).light_time_s)) if len(rows) else 0.0
+    memo = _Memo(forward, motion)
+    lag = memo.light_time(start) if len(rows) else 0.0
     linear_model = nuisance(rows, receivers, settings.clocks, lag)
     if initial_weights is None:
         gross = np.zeros(len(rows), bool) if settings.gates.keep_all else gross_outliers(rows)
@@ -160,15 +161,16 @@ def fit_arc(
     else:
         weights = initial_weights
     parameters, iterations = start, 0
-    memo = _Memo(forward, motion)
-    for _ in range(10):
-        minimum, linear = _weighted_fit(memo, linear_model, weights, parameters, settings)
+    for attempt in range(10):
+        # Weights are settled on a minimum good to a tenth of a sigma; the last one is good to some thousandths.
+        tolerance = 1e-2 if attempt == 0 and not settings.gates.keep_all else 1e-5
+        minimum, linear = _weighted_fit(memo, linear_model, weights, parameters, settings, tolerance)
         parameters = minimum.parameters
         iterations += minimum.iterations
         residuals = rows.z - memo.prediction(parameters) - linear_model.columns @ linear
         renewed = robust_weights(residuals / rows.sigma, settings.gates, rows.station)
         change = np.abs(np.log(renewed / weights)).max(initial=0.0)
-        if settings.gates.keep_all or change < 0.02:
+        if settings.gates.keep_all or (change < 0.02 and attempt > 0):
             break
         weights = renewed
     return _result(memo, linear_model, weights, minimum, linear, residuals, iterations, settings)
@@ -187,7 +189,13 @@ class _Memo:
             self._path = self.motion.at(parameters)
             self._link = self.forward.links(self._path)
             self._prediction = self.forward.predict(self._path, self._link)
+            self._partials = None
             self._key = key
+
+    def light_time(self, parameters: np.ndarray) -> float:
+        """Return the median light time [s]."""
+        self._bind(parameters)
+        return float(np.median(self._link.light_time_s))
 
     def path(self, parameters: np.ndarray) -> Path:
         self._bind(parameters)
@@ -199,11 +207,13 @@ class _Memo:
 
     def partials(self, parameters: np.ndarray) -> np.ndarray:
         self._bind(parameters)
-        return self.forward.partials(self._path, self._link)
+        if self._partials is None:
+            self._partials = self.forward.partials(self._path, self._link)
+        return self._partials
 
 
 def _weighted_fit(
-    memo: _Memo, linear_model: Nuisance, weights: np.ndarray, start: np.ndarray, settings: FitSettings
+    memo: _Memo, linear_model: Nuisance, weights: np.ndarray, start: np.ndarray, settings: FitSettings, tolerance: float
 ) -> tuple[Minimum, np.ndarray]:
     rows = memo.forward.rows
     whiten = whitener(rows.sigma, rows.chained, weights)
@@ -223,6 +233,7 @@ def _weighted_fit(
         start,
         scales=memo.motion.scales,
         max_iterations=settings.max_iterations,
+        tolerance=tolerance,
         check_cancelled=settings.check_cancelled,
     )
     linear = eliminate.linear(whiten(rows.z - memo.prediction(minimum.parameters)))

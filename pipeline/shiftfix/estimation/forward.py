@@ -72,6 +72,8 @@ class ForwardModel:
         self.receiver = States(*(np.concatenate(part) for part in zip(*states, strict=True))) if states else None
         if self.receiver is not None:
             self.receiver_potential = gravity.earth_potential(self.receiver.position)
+            self.interval_s = np.where(self.mean, rows.interval_s, 1.0)
+            self.receiver_lost_s = doppler.time_lost(self.receiver, self.first, self.last, self.interval_s)
             # Media are evaluated with the geocentric vertical turned to the geodetic one by the ellipsoid's normal.
             normal = self.receiver.position * np.array([1.0, 1.0, 1.0 / (1.0 - constants.WGS84_E2)])
             self.vertical = normal / np.linalg.norm(normal, axis=1)[:, None]
@@ -112,23 +114,11 @@ class ForwardModel:
             emitter_potential=gravity.earth_potential(link.emitter.position),
         )
 
-    def _ends(self, link: lighttime.Link) -> tuple:
-        a, b = self.first, self.last
-        start, stop = _take(link, a), _take(link, b)
-        receivers = (States(*(p[a] for p in self.receiver)), States(*(p[b] for p in self.receiver)))
-        return start, stop, *receivers
-
     def _mean(self, link: lighttime.Link) -> np.ndarray:
-        interval = np.where(self.mean, self.rows.interval_s, 1.0)
-        return doppler.log_mean_ratio(*self._ends(link), interval)
+        return doppler.mean_ratio_of_events(link, self.first, self.last, self.interval_s, self.receiver_lost_s)
 
     def _mean_partials(self, link: lighttime.Link, d_position: np.ndarray, d_velocity: np.ndarray) -> np.ndarray:
-        interval = np.where(self.mean, self.rows.interval_s, 1.0)
-        ends = self._ends(link)
-        a, b = self.first, self.last
-        return doppler.log_mean_ratio_partials(
-            *ends, interval, d_position[a], d_velocity[a], d_position[b], d_velocity[b]
-        )
+        return doppler.mean_partials_of_events(link, self.first, self.last, self.interval_s, d_position, d_velocity)
 
     def sin_elevation(self, link: lighttime.Link) -> np.ndarray:
         """Return the sine of the geometric elevation of the emitter at each event."""
@@ -184,9 +174,3 @@ class ForwardModel:
         """Return the elevation of the emitter at the middle of each row [deg]."""
         s = self.sin_elevation(self.links(path))
         return np.degrees(np.arcsin(np.clip(0.5 * (s[self.first] + s[self.last]), -1.0, 1.0)))
-
-
-def _take(link: lighttime.Link, index: np.ndarray) -> lighttime.Link:
-    return lighttime.Link(
-        *(States(*(p[index] for p in part)) if isinstance(part, tuple) else part[index] for part in link)
-    )

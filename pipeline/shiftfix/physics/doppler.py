@@ -57,6 +57,30 @@ def log_ratio(
     return 0.5 * np.log1p(dilation + doppler * (2.0 + doppler) * (1.0 + dilation))
 
 
+def log_ratio_precise(
+    link: Link,
+    receiver: States,
+    *,
+    receiver_potential: np.ndarray | float = 0.0,
+    emitter_potential: np.ndarray | float = 0.0,
+) -> np.ndarray:
+    """Return ln D as `log_ratio` does, but with relative accuracy where it nearly vanishes, shape (n,) float64.
+
+    `log_ratio` is good to about 1e-15 absolute times the sizes of its terms; where approach and time dilation cancel
+    (|ln D| far below v/c), its relative error grows. Here the same expression runs in extended precision (64-bit
+    significand; on platforms whose long double is double, no better than `log_ratio`). Ten times slower: for checks.
+    """
+    n, c = link.direction.astype(np.longdouble), np.longdouble(SPEED_OF_LIGHT_M_S)
+    beta_t, beta_r = link.emitter.velocity.astype(np.longdouble) / c, receiver.velocity.astype(np.longdouble) / c
+    dot = lambda a, b: (a * b).sum(axis=-1)  # noqa: E731
+    w_r, w_t = (np.asarray(w, np.longdouble) / c**2 for w in (receiver_potential, emitter_potential))
+    doppler = -dot(n, beta_r - beta_t) / (1 - dot(n, beta_t))
+    norm_r = 1 - 2 * w_r + 2 * w_r**2 - (1 + 2 * w_r) * dot(beta_r, beta_r)
+    difference = dot(beta_r - beta_t, beta_r + beta_t) + 2 * (w_r - w_t) * (1 - w_r - w_t)
+    dilation = (difference + 2 * (w_r * dot(beta_r, beta_r) - w_t * dot(beta_t, beta_t))) / norm_r
+    return (np.log1p(dilation + doppler * (2 + doppler) * (1 + dilation)) / 2).astype(float)
+
+
 def log_ratio_partials(link: Link, receiver: States, d_position: np.ndarray, d_velocity: np.ndarray) -> np.ndarray:
     """Return d ln D / d parameters, shape (n, p), the shift of the emission time included.
 
@@ -86,25 +110,67 @@ def log_ratio_partials(link: Link, receiver: States, d_position: np.ndarray, d_v
     return np.einsum("ni,nip->np", weight_x, d_position) + np.einsum("ni,nip->np", on_v, d_velocity)
 
 
-def _clock_deficit(position: np.ndarray, velocity: np.ndarray) -> np.ndarray:
+def clock_deficit(position: np.ndarray, velocity: np.ndarray) -> np.ndarray:
     """Return 1 - d(proper time)/d(coordinate time), first post-Newtonian order, (n,)."""
     return (earth_potential(position) + 0.5 * np.einsum("ni,ni->n", velocity, velocity)) / C2
 
 
-def _clock_deficit_rate(states: States) -> np.ndarray:
+def clock_deficit_rate(states: States) -> np.ndarray:
+    """Return the time derivative of `clock_deficit` [1/s], (n,)."""
     gradient = earth_potential_gradient(states.position)
     return np.einsum("ni,ni->n", states.velocity, gradient + states.acceleration) / C2
 
 
-def _lost(start: States, stop: States, duration_s: np.ndarray) -> np.ndarray:
-    """Return coordinate time minus proper time over intervals [s].
+def time_lost(states: States, first: np.ndarray, last: np.ndarray, duration_s: np.ndarray) -> np.ndarray:
+    """Return coordinate time minus proper time [s] of a body between its states `first` and `last`, shape (rows,).
 
     Values and slopes at both ends (Euler-Maclaurin): the neglected fourth-order term is below 1e-19 s for 60 s in a
     low orbit of eccentricity 0.1.
     """
-    a, b = _clock_deficit(start.position, start.velocity), _clock_deficit(stop.position, stop.velocity)
-    slopes = _clock_deficit_rate(start) - _clock_deficit_rate(stop)
-    return duration_s * (0.5 * (a + b) + duration_s * slopes / 12.0)
+    deficit, rate = clock_deficit(states.position, states.velocity), clock_deficit_rate(states)
+    return duration_s * (0.5 * (deficit[first] + deficit[last]) + duration_s * (rate[first] - rate[last]) / 12.0)
+
+
+def mean_ratio_of_events(
+    link: Link, first: np.ndarray, last: np.ndarray, interval_s: np.ndarray, receiver_lost_s: np.ndarray
+) -> np.ndarray:
+    """Return ln of mean received over rest frequency across count intervals between reception events, shape (rows,).
+
+    Parameters
+    ----------
+    link : Link
+        At all reception events.
+    first, last : ndarray of int, shape (rows,)
+        Events at both ends of each interval; neighbouring counts share theirs.
+    interval_s : ndarray, shape (rows,)
+        Length in coordinate time.
+    receiver_lost_s : ndarray, shape (rows,)
+        Coordinate minus proper time of the receiver over the interval (7e-10 of it on the ground).
+    """
+    change = link.light_time_s[last] - link.light_time_s[first]
+    lost = time_lost(link.emitter, first, last, interval_s - change)
+    return np.log1p((receiver_lost_s - lost - change) / (interval_s - receiver_lost_s))
+
+
+def mean_partials_of_events(
+    link: Link,
+    first: np.ndarray,
+    last: np.ndarray,
+    interval_s: np.ndarray,
+    d_position: np.ndarray,
+    d_velocity: np.ndarray,
+) -> np.ndarray:
+    """Return d ln(mean ratio) / d parameters, shape (rows, p); partials (events, 3, p) at fixed emission times."""
+    c = SPEED_OF_LIGHT_M_S
+    v = link.emitter.velocity
+    approach = np.einsum("ni,ni->n", link.direction, v) / c
+    emitted = interval_s - (link.light_time_s[last] - link.light_time_s[first])
+    # Change of the emitter's proper time at each event, and of its clock rate there.
+    toward = (1.0 - clock_deficit(link.emitter.position, v)) / (c * (1.0 - approach))
+    moved = np.einsum("ni,nip->np", link.direction * toward[:, None], d_position)
+    rate = np.einsum("ni,nip->np", earth_potential_gradient(link.emitter.position) * (0.5 / C2), d_position)
+    rate += np.einsum("ni,nip->np", v * (0.5 / C2), d_velocity)
+    return (moved[last] - moved[first]) / emitted[:, None] - (rate[last] + rate[first])
 
 
 def log_mean_ratio(
@@ -120,18 +186,14 @@ def log_mean_ratio(
     interval_s : ndarray, shape (n,)
         Length in coordinate time; its excess over the receiver's proper time (7e-10 of it) is taken off here.
     """
-    change = stop.light_time_s - start.light_time_s
-    emitted = interval_s - change
-    lost_t = _lost(start.emitter, stop.emitter, emitted)
-    lost_r = _lost(receiver_start, receiver_stop, interval_s)
-    return np.log1p((lost_r - lost_t - change) / (interval_s - lost_r))
+    link, first, last = _joined(start, stop)
+    receiver = States(*(np.concatenate(p) for p in zip(receiver_start, receiver_stop, strict=True)))
+    return mean_ratio_of_events(link, first, last, interval_s, time_lost(receiver, first, last, interval_s))
 
 
 def log_mean_ratio_partials(
     start: Link,
     stop: Link,
-    receiver_start: States,
-    receiver_stop: States,
     interval_s: np.ndarray,
     d_position_start: np.ndarray,
     d_velocity_start: np.ndarray,
@@ -139,22 +201,15 @@ def log_mean_ratio_partials(
     d_velocity_stop: np.ndarray,
 ) -> np.ndarray:
     """Return d ln(mean ratio) / d parameters, shape (n, p); partials of the emitter at fixed emission times."""
-    c = SPEED_OF_LIGHT_M_S
-    emitted = interval_s - (stop.light_time_s - start.light_time_s)
+    link, first, last = _joined(start, stop)
+    d_position = np.concatenate([d_position_start, d_position_stop])
+    d_velocity = np.concatenate([d_velocity_start, d_velocity_stop])
+    return mean_partials_of_events(link, first, last, interval_s, d_position, d_velocity)
 
-    def ends(link: Link, sign: float) -> tuple[np.ndarray, np.ndarray]:
-        v = link.emitter.velocity
-        deficit = _clock_deficit(link.emitter.position, v)
-        moved = link.direction / (c * (1.0 - np.einsum("ni,ni->n", link.direction, v) / c))[:, None]
-        on_x = sign * moved * (1.0 - deficit)[:, None]
-        half = (0.5 * emitted / C2)[:, None]
-        return on_x - half * earth_potential_gradient(link.emitter.position), -half * v
 
-    a_x, a_v = ends(start, -1.0)
-    b_x, b_v = ends(stop, 1.0)
-    scale = (1.0 / emitted)[:, None]
-    out = np.einsum("ni,nip->np", b_x * scale, d_position_stop)
-    out += np.einsum("ni,nip->np", a_x * scale, d_position_start)
-    out += np.einsum("ni,nip->np", b_v * scale, d_velocity_stop)
-    out += np.einsum("ni,nip->np", a_v * scale, d_velocity_start)
-    return out
+def _joined(start: Link, stop: Link) -> tuple[Link, np.ndarray, np.ndarray]:
+    """Return the links of both ends as one set of events, with the indices of the ends."""
+    emitter = States(*(np.concatenate(p) for p in zip(start.emitter, stop.emitter, strict=True)))
+    link = Link(*(np.concatenate(p) for p in zip(start[:4], stop[:4], strict=True)), emitter)
+    n = len(start.light_time_s)
+    return link, np.arange(n), np.arange(n, 2 * n)
