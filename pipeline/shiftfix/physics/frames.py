@@ -48,7 +48,7 @@ class EarthFrame:
         tai_midnight = jd1 - 2400000.5
         self._whole = (jd1, tai_midnight)
         self._fraction_tt = jd2
-        self._kept: tuple[bytes, np.ndarray, np.ndarray] | None = None
+        self._kept: tuple[bytes, np.ndarray, np.ndarray, np.ndarray] | None = None
 
     @classmethod
     def from_orientation(
@@ -109,19 +109,29 @@ class EarthFrame:
         celestial = _celestial_matrix(x, y, s)
         terrestrial = _terrestrial_matrix(angle, xp, yp, tio)
         out = celestial @ terrestrial
-        self._kept = (key, out, celestial)
+        self._kept = (key, out, celestial, angle)
         return out
 
     def spin(self, times_s: np.ndarray) -> np.ndarray:
         """Return the angular velocity of the Earth in GCRS [rad/s], (n, 3).
 
-        The pole of the rotation is the celestial intermediate pole; precession and polar motion themselves turn the
-        Earth by less than 1e-11 rad/s (below 1e-4 of a millimetre per second at the ground).
+        The Earth turns about the celestial intermediate pole; the pole's own motion turns it by up to 5e-12 rad/s
+        (3e-5 m/s on the ground) and polar motion by 2e-13 rad/s (1e-6 m/s). Both origins are non-rotating ones
+        (IERS Conventions 2010, sec. 5.4), so neither turns the Earth along the pole. Products of the pole's
+        coordinates with those rates (1e-18 rad/s) are left out.
         """
-        self.rotation(times_s)
-        pole = self._kept[2][:, :, 2]
-        rate = _ROTATION_RATE * (1.0 + self._celestial(np.atleast_1d(times_s), 1)[:, 6])
-        return pole * rate[:, None]
+        times = np.atleast_1d(np.asarray(times_s, float))
+        self.rotation(times)
+        celestial, angle = self._kept[2], self._kept[3]
+        rates = self._celestial(times, 1)
+        turn = _ROTATION_RATE * (1.0 + rates[:, 6])
+        cosine, sine = np.cos(angle), np.sin(angle)
+        # Polar motion turns by (-yp', -xp', 0) in axes fixed to the Earth.
+        across = -cosine * rates[:, 4] + sine * rates[:, 3], -sine * rates[:, 4] - cosine * rates[:, 3]
+        pole = celestial[:, :, 2]
+        moving = np.column_stack([rates[:, :2], -(pole[:, 0] * rates[:, 0] + pole[:, 1] * rates[:, 1]) / pole[:, 2]])
+        spin = pole * turn[:, None] + _cross(pole, moving)
+        return spin + celestial[:, :, 0] * across[0][:, None] + celestial[:, :, 1] * across[1][:, None]
 
     def to_gcrs(self, times_s: np.ndarray, position_itrs_m: np.ndarray, velocity_itrs_m_s: np.ndarray | float = 0.0) -> States:
         """Return GCRS states of Earth-fixed positions and velocities (relative to the rotating Earth).
