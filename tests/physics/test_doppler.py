@@ -75,7 +75,8 @@ def test_fast_path_has_relative_accuracy_1e_14_unless_terms_cancel(against_50_di
 def test_potentials_in_the_extended_path_agree_with_the_fast_path():
     link, receiver = scenes(500, 1e-4, 2)
     potentials = {"receiver_potential": np.full(500, 6.2e7), "emitter_potential": np.linspace(1e7, 6e7, 500)}
-    assert np.abs(doppler.log_ratio(link, receiver, **potentials) - doppler.log_ratio_precise(link, receiver, **potentials)).max() < 3e-20
+    fast, precise = (f(link, receiver, **potentials) for f in (doppler.log_ratio, doppler.log_ratio_precise))
+    assert np.abs(fast - precise).max() < 3e-20
     # Clock at height: w difference over c**2 when nothing moves, blue below (first post-Newtonian order)
     still = States(receiver.position, np.zeros((500, 3)), np.zeros((500, 3)))
     resting = link._replace(emitter=States(link.emitter.position, np.zeros((500, 3)), np.zeros((500, 3))))

@@ -196,7 +196,7 @@ def _celestial_matrix(x: np.ndarray, y: np.ndarray, s: np.ndarray) -> np.ndarray
 
 def _terrestrial_matrix(angle: np.ndarray, xp: np.ndarray, yp: np.ndarray, tio: np.ndarray) -> np.ndarray:
     """Return ITRS to CIRS rotations R3(-angle) R3(-tio) R2(xp) R1(yp) (IERS Conventions 2010, eq. 5.3 and 5.5)."""
-    turn = angle - tio
+    turn = angle + tio
     c, s = np.cos(turn), np.sin(turn)
     cx, sx, cy, sy = np.cos(xp), np.sin(xp), np.cos(yp), np.sin(yp)
     w = np.empty((angle.size, 3, 3))
