@@ -73,12 +73,21 @@ def known_emitters(inputs, params, context):
         parts.append(part)
         findings += words
     if not parts:
-        raise InputError(Problem(f"node {context.node}", "no station heard a known emitter", found=", ".join(known), remedy="check emitter names and the elevation mask"))
+        raise InputError(
+            Problem(
+                f"node {context.node}",
+                "no station heard a known emitter",
+                found=", ".join(known),
+                remedy="check emitter names and the elevation mask",
+            )
+        )
     for text in findings:
         context.logger.info(text)
     return {
         "offsets": OffsetTable(
-            rows=pd.concat(parts, ignore_index=True), datum="known emitters: " + ", ".join(sorted(known)), findings=tuple(findings)
+            rows=pd.concat(parts, ignore_index=True),
+            datum="known emitters: " + ", ".join(sorted(known)),
+            findings=tuple(findings),
         )
     }
 
@@ -114,7 +123,9 @@ def _known(inputs, table, params, frame, epoch) -> dict[str, _Known]:
     if not out:
         raise InputError(
             Problem(
-                "frequencies", "no row belongs to a known emitter", found=", ".join(sorted(present)) or "no emitter is named",
+                "frequencies",
+                "no row belongs to a known emitter",
+                found=", ".join(sorted(present)) or "no emitter is named",
                 remedy="connect an ephemeris or an emitter book that names them",
             )
         )
@@ -153,16 +164,23 @@ def _looks(table, mine, known, receiver, epoch, media, params):
         one = known[name]
         rows = mine[emitter[mine] == name]
         # Emission comes up to 0.15 s before reception: the count must begin that long after the first sample.
-        rows = rows[(tags[rows] - half_ns[rows] > one.span[0] + 300_000_000) & (tags[rows] + half_ns[rows] <= one.span[1])]
+        rows = rows[
+            (tags[rows] - half_ns[rows] > one.span[0] + 300_000_000) & (tags[rows] + half_ns[rows] <= one.span[1])
+        ]
         if not rows.size:
             continue
         start = np.array([correction(t) for t in tags[rows] - half_ns[rows]])
         stop = np.array([correction(t) for t in tags[rows] + half_ns[rows]])
         reference = float(np.median(table.array("nominal_frequency_hz")[rows]))
         observed, order = observations(
-            station=np.zeros(rows.size, int), middle_s=(tags[rows] - epoch) * 1e-9, interval_s=interval[rows],
-            received_hz=table.array("received_frequency_hz")[rows], sigma_hz=table.array("received_frequency_sigma_hz")[rows],
-            reference_hz=reference, start_correction_s=start, stop_correction_s=stop,
+            station=np.zeros(rows.size, int),
+            middle_s=(tags[rows] - epoch) * 1e-9,
+            interval_s=interval[rows],
+            received_hz=table.array("received_frequency_hz")[rows],
+            sigma_hz=table.array("received_frequency_sigma_hz")[rows],
+            reference_hz=reference,
+            start_correction_s=start,
+            stop_correction_s=stop,
         )
         rows = rows[order]
         forward = ForwardModel(observed, (receiver,), media)
@@ -170,17 +188,36 @@ def _looks(table, mine, known, receiver, epoch, media, params):
             link = forward.links(one.path)
             predicted = known_log_ratio(forward, one.path, one.clock, link)
         except ValueError as error:
-            raise InputError(Problem(f"ephemeris of {name}", "does not cover the rows of this emitter", found=str(error).replace("\n", "; "))) from error
+            raise InputError(
+                Problem(
+                    f"ephemeris of {name}",
+                    "does not cover the rows of this emitter",
+                    found=str(error).replace("\n", "; "),
+                )
+            ) from error
         if one.clock is None:
             predicted = predicted + np.log1p((one.rest_hz - reference) / reference)
         sine = forward.sin_elevation(link)
         elevation = np.degrees(np.arcsin(np.minimum(sine[forward.first], sine[forward.last])))
         rate = observed.z - predicted
-        good = np.isfinite(rate) & ((elevation > params.elevation_mask) | (one.clock is None and receiver.height_m < 20e3 and abs(_height(one, epoch)) < 20e3))
-        mapping = forward.zenith_mapping(link) if params.troposphere == "estimated" and one.clock is not None else np.zeros(sine.size)
+        good = np.isfinite(rate) & (
+            (elevation > params.elevation_mask)
+            | (one.clock is None and receiver.height_m < 20e3 and abs(_height(one, epoch)) < 20e3)
+        )
+        mapping = (
+            forward.zenith_mapping(link)
+            if params.troposphere == "estimated" and one.clock is not None
+            else np.zeros(sine.size)
+        )
         for key, values in (
-            ("row", rows), ("rate", rate), ("sigma", observed.sigma), ("map_a", mapping[forward.first]), ("map_b", mapping[forward.last]),
-            ("tag_a", tags[rows] - half_ns[rows]), ("tag_b", tags[rows] + half_ns[rows]), ("emitter", np.full(rows.size, number)),
+            ("row", rows),
+            ("rate", rate),
+            ("sigma", observed.sigma),
+            ("map_a", mapping[forward.first]),
+            ("map_b", mapping[forward.last]),
+            ("tag_a", tags[rows] - half_ns[rows]),
+            ("tag_b", tags[rows] + half_ns[rows]),
+            ("emitter", np.full(rows.size, number)),
             ("elevation", elevation),
         ):
             columns[key].append(np.asarray(values)[good])
@@ -255,12 +292,20 @@ def _time_offsets(table, mine, known, receiver, epoch):
 
 def _piecewise(name, table, mine, looks, params):
     """Return rows with one free offset an interval, in the phase domain where records are unbroken."""
-    _, record = np.unique(np.char.add(looks["emitter"].astype(str), looks["phase_arc"].astype(str)), return_inverse=True)
+    _, record = np.unique(
+        np.char.add(looks["emitter"].astype(str), looks["phase_arc"].astype(str)), return_inverse=True
+    )
     sine = np.sin(np.radians(np.maximum(looks["elevation"], 5.0)))
     # Low elevations carry more media and multipath: phase noise grows as 1/sin (common practice).
     sigma = looks["sigma"] * looks["interval"] / np.sqrt(2.0) / sine
     history = clock_history(
-        looks["tag_a"], looks["tag_b"], looks["rate"], sigma, record, looks["map_a"], looks["map_b"],
+        looks["tag_a"],
+        looks["tag_b"],
+        looks["rate"],
+        sigma,
+        record,
+        looks["map_a"],
+        looks["map_b"],
         zenith_sigma_m=params.zenith_sigma if params.troposphere == "estimated" else 0.0,
     )
     at = {int(e): k for k, e in enumerate(history.epochs_ns)}

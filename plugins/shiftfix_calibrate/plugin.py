@@ -4,7 +4,18 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 
-from shiftfix.api import EarthOrientation, EmitterTable, Ephemeris, FrequencyTable, NodeSpec, OffsetTable, Port, StationTable, hookimpl, param
+from shiftfix.api import (
+    EarthOrientation,
+    EmitterTable,
+    Ephemeris,
+    FrequencyTable,
+    NodeSpec,
+    OffsetTable,
+    Port,
+    StationTable,
+    hookimpl,
+    param,
+)
 
 
 @dataclass(frozen=True)
@@ -17,14 +28,18 @@ class KnownEmittersParams:
         choices=("piecewise", "constant", "drift", "random_walk"),
     )
     exclude: tuple[str, ...] = param("emitters that must not be used (the one to be located)", default=())
-    elevation_mask: float = param("lowest elevation of a known emitter", default=10.0, unit="deg", minimum=-10.0, maximum=80.0)
+    elevation_mask: float = param(
+        "lowest elevation of a known emitter", default=10.0, unit="deg", minimum=-10.0, maximum=80.0
+    )
     troposphere: str = param(
         "none; standard atmosphere; or estimated: with a zenith correction from the known emitters themselves",
         default="estimated",
         choices=("none", "standard", "estimated"),
     )
     zenith_sigma: float = param("prior 1-sigma of the zenith correction", default=0.3, unit="m", minimum=0.0)
-    random_walk: float = param("random walk of the frequency, 1 sigma after one second", default=1e-11, unit="1", minimum=0.0)
+    random_walk: float = param(
+        "random walk of the frequency, 1 sigma after one second", default=1e-11, unit="1", minimum=0.0
+    )
     minimum_emitters: int = param("fewest known emitters in an interval", default=2, minimum=1, maximum=100)
 
 
@@ -47,7 +62,9 @@ def shiftfix_nodes():
                 "stations": Port(StationTable, "stations that received"),
                 "ephemeris": Port(Ephemeris, "motion of orbiting known emitters", optional=True, many=True),
                 "emitters": Port(EmitterTable, "rest frequency and place of known emitters", optional=True),
-                "orientation": Port(EarthOrientation, "Earth orientation; the bundled table when absent", optional=True),
+                "orientation": Port(
+                    EarthOrientation, "Earth orientation; the bundled table when absent", optional=True
+                ),
             },
             outputs={"offsets": Port(OffsetTable, "history of every station")},
             params=KnownEmittersParams,

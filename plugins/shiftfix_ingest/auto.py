@@ -42,9 +42,23 @@ def read_auto(inputs: Any, params: AutoParams, context: Any) -> dict[str, Freque
         if len(yes) == 1:
             chosen.append((file, context.readers[yes[0]], yes[0]))
         elif yes:
-            problems.append(Problem(file.name, "more than one reader recognises this file", found=said, remedy="name the node that you mean"))
+            problems.append(
+                Problem(
+                    file.name,
+                    "more than one reader recognises this file",
+                    found=said,
+                    remedy="name the node that you mean",
+                )
+            )
         else:
-            problems.append(Problem(file.name, "no reader recognises this file", found=said, remedy="name a node (such as ingest.delimited), or install a plugin for this format"))
+            problems.append(
+                Problem(
+                    file.name,
+                    "no reader recognises this file",
+                    found=said,
+                    remedy="name a node (such as ingest.delimited), or install a plugin for this format",
+                )
+            )
     if problems:
         raise InputError(problems)
     tables = []

@@ -12,12 +12,21 @@ from typing import Any
 import numpy as np
 import pandas as pd
 
-from shiftfix.api import FrequencyTable, InputError, Problem, Reject, Source, parse_quantity, tai_ns_from_gps, tai_ns_from_texts
-from shiftfix_ingest.delimited_params import ROLES, DelimitedParams
+from shiftfix.api import (
+    FrequencyTable,
+    InputError,
+    Problem,
+    Reject,
+    Source,
+    parse_quantity,
+    tai_ns_from_gps,
+    tai_ns_from_texts,
+)
+from shiftfix_ingest.delimited_checks import UNIT, declaration_problems, scale_problem
+from shiftfix_ingest.delimited_params import DelimitedParams
 from shiftfix_ingest.receiver_chain import chain_terms
 from shiftfix_ingest.source_files import SourceFile, binary_problem, open_sources
 
-_UNIT = {"frequency": "Hz", "sigma": "Hz", "interval": "s", "cn0": "dBHz", "rate": "Hz/s"}
 _SHOWN = 20
 
 
@@ -34,11 +43,19 @@ def read_delimited(inputs: Any, params: DelimitedParams, context: Any) -> dict[s
     InputError
         Unusable files and (with on_bad_row = refuse) unusable rows, all at once with file and line.
     """
-    problems = _declaration_problems(params, f"nodes.{context.node}.params")
+    problems = declaration_problems(params, f"nodes.{context.node}.params")
     files, opening, notes = open_sources(params.files, context.display_path)
     problems += opening
     if notes and params.on_repeat == "refuse":
-        problems += [Problem(n.split(" holds ")[0], "the same file is given twice", found=n, remedy="name it once, or on_repeat = \"ignore\"") for n in notes]
+        problems += [
+            Problem(
+                n.split(" holds ")[0],
+                "the same file is given twice",
+                found=n,
+                remedy='name it once, or on_repeat = "ignore"',
+            )
+            for n in notes
+        ]
     problems += [p for p in (binary_problem(f, "delimited text") for f in files) if p]
     if problems:
         raise InputError(problems)
@@ -52,61 +69,37 @@ def read_delimited(inputs: Any, params: DelimitedParams, context: Any) -> dict[s
         if bad and params.on_bad_row == "refuse":
             problems += [Problem(f"{r.source}:{r.row_number}", r.reason, found=r.text) for r in bad[:_SHOWN]]
             if len(bad) > _SHOWN:
-                problems.append(Problem(file.name, f"{len(bad) - _SHOWN} more unusable rows", remedy='correct them, or on_bad_row = "reject" to count and list them'))
+                problems.append(
+                    Problem(
+                        file.name,
+                        f"{len(bad) - _SHOWN} more unusable rows",
+                        remedy='correct them, or on_bad_row = "reject" to count and list them',
+                    )
+                )
         frames.append(frame)
         rejects += bad
         sources.append(Source(file.name, file.sha256, count, len(frame), len(bad)))
     if problems:
         raise InputError(problems)
     rows = pd.concat(frames, ignore_index=True)
-    return {"frequencies": FrequencyTable(rows=rows, sources=tuple(sources), rejects=tuple(rejects), notes=tuple(notes))}
+    return {
+        "frequencies": FrequencyTable(rows=rows, sources=tuple(sources), rejects=tuple(rejects), notes=tuple(notes))
+    }
 
 
-def _declaration_problems(params: DelimitedParams, where: str) -> list[Problem]:
-    out = []
-    for role in params.columns:
-        if role not in ROLES:
-            out.append(Problem(f"{where}.columns.{role}", "unknown role of a column", found=role, allowed=", ".join(ROLES)))
-    for role in ("time", "frequency"):
-        if role not in params.columns:
-            out.append(Problem(f"{where}.columns", f"the {role} column is not declared", allowed=f'columns = {{ {role} = "NAME" }}'))
-    if not params.time_scale:
-        out.append(Problem(f"{where}.time_scale", "time without scale", allowed="UTC, TAI, TT, GPS", remedy='say time_scale = "UTC"'))
-    if "station" not in params.columns and not params.station:
-        out.append(Problem(f"{where}.station", "no station: neither a column nor a value", remedy='station = "NAME" or columns.station'))
-    if "sigma" not in params.columns and not params.sigma:
-        out.append(Problem(f"{where}.sigma", "no 1-sigma: neither a column nor a value", remedy='sigma = "1 Hz" or columns.sigma'))
-    if (params.interval > 0 or "interval" in params.columns) and not params.time_tag:
-        out.append(Problem(f"{where}.time_tag", "counts over an interval without time_tag", allowed="start, middle, end", remedy="say which instant of the interval the tag names"))
-    if params.frequency_kind == "offset" and params.nominal_frequency is None:
-        out.append(Problem(f"{where}.nominal_frequency", "offsets need the nominal frequency"))
-    if params.frequency_kind != "audio" and params.chain:
-        out.append(Problem(f"{where}.chain", 'a receiver chain needs frequency_kind = "audio"'))
-    if params.frequency_kind == "audio" and not params.chain:
-        out.append(Problem(f"{where}.chain", "a tone needs the receiver chain", allowed='chain = [{ lo = "437 MHz", side = "upper" }]'))
-    try:
-        chain_terms(params.chain)
-    except ValueError as error:
-        out.append(Problem(f"{where}.chain", str(error)))
-    for role in params.columns:
-        if role in _UNIT and role not in params.units and role != "cn0":
-            out.append(Problem(f"{where}.units.{role}", f"the unit of the {role} column is not declared", allowed=f'units = {{ {role} = "{_UNIT[role]}" }}'))
-    for role, unit in params.units.items():
-        try:
-            parse_quantity(f"1 {unit}", _UNIT.get(role, "1"))
-        except ValueError as error:
-            out.append(Problem(f"{where}.units.{role}", str(error)))
-    if params.time_format == "gps" and ("week" not in params.columns or params.time_scale != "GPS"):
-        out.append(Problem(f"{where}.columns.week", 'time_format = "gps" needs a week column and time_scale = "GPS"'))
-    return out
-
-
-def _read_file(file: SourceFile, params: DelimitedParams) -> tuple[pd.DataFrame | None, list[Reject], int, list[Problem]]:
+def _read_file(
+    file: SourceFile, params: DelimitedParams
+) -> tuple[pd.DataFrame | None, list[Reject], int, list[Problem]]:
     try:
         text = file.data.decode("utf-8-sig")
     except UnicodeDecodeError as error:
         line = file.data[: error.start].count(b"\n") + 1
-        return None, [], 0, [Problem(f"{file.name}:{line}", "not UTF-8 text", found=repr(file.data[error.start : error.start + 8]))]
+        return (
+            None,
+            [],
+            0,
+            [Problem(f"{file.name}:{line}", "not UTF-8 text", found=repr(file.data[error.start : error.start + 8]))],
+        )
     lines = text.splitlines()
     keep = [k for k, s in enumerate(lines) if s.strip() and not (params.comment and s.startswith(params.comment))]
     if params.header and keep:
@@ -125,7 +118,13 @@ def _read_file(file: SourceFile, params: DelimitedParams) -> tuple[pd.DataFrame 
         elif column in names:
             where[role] = names.index(column)
         else:
-            problems.append(Problem(f"{file.name}:1", f"no column {column!r} for {role}", allowed=", ".join(names) or f"numbers 1 to {width}"))
+            problems.append(
+                Problem(
+                    f"{file.name}:1",
+                    f"no column {column!r} for {role}",
+                    allowed=", ".join(names) or f"numbers 1 to {width}",
+                )
+            )
     if problems:
         return None, [], len(keep), problems
     if _ragged(lines, keep, separator, width):
@@ -133,7 +132,13 @@ def _read_file(file: SourceFile, params: DelimitedParams) -> tuple[pd.DataFrame 
     else:
         body = text if len(keep) == len(lines) else "\n".join(lines[k] for k in keep)
         fields = pd.read_csv(
-            io.StringIO(body), sep=separator, header=None, dtype=object, keep_default_na=False, engine="c", quotechar='"'
+            io.StringIO(body),
+            sep=separator,
+            header=None,
+            dtype=object,
+            keep_default_na=False,
+            engine="c",
+            quotechar='"',
         )
         fields[width] = ""
     numbers = np.array(keep) + 1
@@ -148,7 +153,9 @@ def _ragged(lines: list[str], keep: list[int], separator: str, width: int) -> bo
 def _fields(line: str, separator: str, width: int) -> list[str]:
     parts = line.split(separator)
     # One column more than declared marks a row that has too many fields; a short one is filled with empty text.
-    return (parts + [""] * width)[:width] + ["surplus" if len(parts) > width else "missing" if len(parts) < width else ""]
+    return (parts + [""] * width)[:width] + [
+        "surplus" if len(parts) > width else "missing" if len(parts) < width else ""
+    ]
 
 
 def _separator(line: str, decimal: str) -> str:
@@ -180,7 +187,9 @@ def _convert(file, fields, numbers, where, params, lines):
     for index, message in trouble:
         messages[index] = message
     note(messages != "", messages)
-    factor = {role: parse_quantity(f"1 {params.units[role]}", _UNIT[role]).value for role in params.units if role in _UNIT}
+    factor = {
+        role: parse_quantity(f"1 {params.units[role]}", UNIT[role]).value for role in params.units if role in UNIT
+    }
     values = {}
     for role in ("frequency", "sigma", "interval", "cn0", "rate"):
         if role in where:
@@ -191,20 +200,35 @@ def _convert(file, fields, numbers, where, params, lines):
     note(np.isfinite(sigma) & (sigma <= 0), "sigma is not greater than 0")
     interval = values.get("interval", np.full(count, params.interval))
     note(np.isfinite(interval) & (interval < 0), "interval is negative")
-    scale = _scale_problem(file, frequency, params)
+    scale = scale_problem(file, frequency, params)
     note(np.isfinite(frequency) & (frequency <= 0), "received frequency is not greater than 0")
     problems = [scale] if scale else []
     wrong_time = [m for m in messages if m]
     if len(wrong_time) > count // 2:
         first = int(np.flatnonzero(messages != "")[0])
-        problems.append(Problem(f"{file.name}:{numbers[first]}", str(messages[first]), found=f"{len(wrong_time)} of {count} rows", allowed=f"ISO times in {params.time_scale}" + (" ending in Z" if params.time_scale == "UTC" else "")))
+        problems.append(
+            Problem(
+                f"{file.name}:{numbers[first]}",
+                str(messages[first]),
+                found=f"{len(wrong_time)} of {count} rows",
+                allowed=f"ISO times in {params.time_scale}" + (" ending in Z" if params.time_scale == "UTC" else ""),
+            )
+        )
         return None, [], count, problems
     bad = reasons != ""
     if bad.all():
         first = int(np.flatnonzero(bad)[0])
-        problems.append(Problem(f"{file.name}:{numbers[first]}", f"every row is unusable: {reasons[first]}", found=lines[numbers[first] - 1][:80]))
+        problems.append(
+            Problem(
+                f"{file.name}:{numbers[first]}",
+                f"every row is unusable: {reasons[first]}",
+                found=lines[numbers[first] - 1][:80],
+            )
+        )
         return None, [], count, problems
-    rejects = [Reject(file.name, int(numbers[k]), str(reasons[k]), lines[numbers[k] - 1][:120]) for k in np.flatnonzero(bad)]
+    rejects = [
+        Reject(file.name, int(numbers[k]), str(reasons[k]), lines[numbers[k] - 1][:120]) for k in np.flatnonzero(bad)
+    ]
     good = ~bad
     shift = {"start": 0.5, "middle": 0.0, "end": -0.5, "": 0.0}[params.time_tag]
     moved = times[good] + np.round((shift * interval[good] - params.delay) * 1e9).astype(np.int64)
@@ -254,23 +278,3 @@ def _sky(values: np.ndarray, params: DelimitedParams) -> np.ndarray:
         sign, constant = chain_terms(params.chain)
         return constant + sign * values
     return values
-
-
-def _scale_problem(file, frequency, params) -> Problem | None:
-    """Return a problem when the frequencies lie a power of a thousand off the nominal one, or far off the radio bands."""
-    good = frequency[np.isfinite(frequency)]
-    if not good.size:
-        return None
-    middle = float(np.median(np.abs(good)))
-    unit = params.units.get("frequency", "Hz")
-    if params.nominal_frequency:
-        ratio = middle / params.nominal_frequency
-        if 0.9 < ratio < 1.1:
-            return None
-        for power, words in ((1e-3, "1000 times too small: is the column in kHz?"), (1e-6, "10^6 times too small: is the column in MHz?"), (1e3, "1000 times too large"), (1e6, "10^6 times too large")):
-            if 0.9 < ratio / power < 1.1:
-                return Problem(f"{file.name}:{1 + int(params.header)}", f"the frequencies are {words}", found=f"median {middle:g} Hz with the declared unit {unit}", allowed=f"near {params.nominal_frequency:g} Hz", remedy="correct units.frequency")
-        return Problem(f"{file.name}:{1 + int(params.header)}", "the frequencies are not near the nominal frequency", found=f"median {middle:g} Hz", allowed=f"within 10 % of {params.nominal_frequency:g} Hz", remedy="correct the unit, the kind of frequency or the nominal frequency")
-    if not 3e3 <= middle <= 3e11:
-        return Problem(f"{file.name}:{1 + int(params.header)}", "the frequencies are not radio frequencies", found=f"median {middle:g} Hz with the declared unit {unit}", allowed="3 kHz to 300 GHz", remedy="correct units.frequency")
-    return None

@@ -37,10 +37,12 @@ class OemParams:
     position_sigma: float = param("1-sigma of each coordinate; 0 when unknown", default=0.0, unit="m", minimum=0.0)
     span: str = param(
         "useable: states outside USEABLE_START_TIME and USEABLE_STOP_TIME are left out; all: they are kept",
-        default="useable", choices=("useable", "all"),
+        default="useable",
+        choices=("useable", "all"),
     )
     on_repeat: str = param(
-        "refuse: the same file twice is an error; ignore: it is used once and noted", default="refuse",
+        "refuse: the same file twice is an error; ignore: it is used once and noted",
+        default="refuse",
         choices=("refuse", "ignore"),
     )
 
@@ -78,7 +80,8 @@ def read_oem(inputs: Any, params: OemParams, context: Any) -> dict[str, Ephemeri
     if len(frames) > 1:
         problems.append(
             Problem(
-                ", ".join(s.name for s, _ in found), "inertial and Earth-fixed frames in one ephemeris",
+                ", ".join(s.name for s, _ in found),
+                "inertial and Earth-fixed frames in one ephemeris",
                 found=", ".join(sorted({b.metadata["REF_FRAME"] for _, bs in found for b in bs})),
                 remedy="read them with two nodes",
             )
@@ -110,8 +113,11 @@ def read_oem(inputs: Any, params: OemParams, context: Any) -> dict[str, Ephemeri
         )
     return {
         "ephemeris": Ephemeris(
-            rows=_ordered(rows), frame=next(iter(frames)), clock_excludes_periodic_relativity=True,
-            sources=tuple(sources_out), position_sigma_m=params.position_sigma,
+            rows=_ordered(rows),
+            frame=next(iter(frames)),
+            clock_excludes_periodic_relativity=True,
+            sources=tuple(sources_out),
+            position_sigma_m=params.position_sigma,
         )
     }
 
@@ -131,8 +137,12 @@ def _block_problems(block: Block, name: str) -> list[Problem]:
     frame = same_text(meta["REF_FRAME"])
     if frame not in _INERTIAL and not frame.startswith("ITRF"):
         out.append(
-            Problem(f"{name}:{lines['REF_FRAME']}", "frame that cannot be converted", found=meta["REF_FRAME"],
-                    allowed=f"{', '.join(_INERTIAL)}, ITRF and its realisations")
+            Problem(
+                f"{name}:{lines['REF_FRAME']}",
+                "frame that cannot be converted",
+                found=meta["REF_FRAME"],
+                allowed=f"{', '.join(_INERTIAL)}, ITRF and its realisations",
+            )
         )
     scale = same_text(meta["TIME_SYSTEM"])
     if scale not in _SCALES:

@@ -110,8 +110,12 @@ def _state(texts: list[str], where: str, problems: list[Problem]) -> tuple[float
     bad = [t for t in texts if not is_number(t)]
     if len(texts) not in (6, 9) or bad:
         problems.append(
-            Problem(where, "state cannot be read", found=bad[0] if bad else f"{len(texts)} numbers",
-                    allowed=f"6 or 9 numbers after the epoch; {NUMBER_RULE} ({STANDARD}, section 5)")
+            Problem(
+                where,
+                "state cannot be read",
+                found=bad[0] if bad else f"{len(texts)} numbers",
+                allowed=f"6 or 9 numbers after the epoch; {NUMBER_RULE} ({STANDARD}, section 5)",
+            )
         )
         return None
     return tuple(float(t) for t in texts[:6])
@@ -243,8 +247,12 @@ def _from_xml(source: SourceFile) -> tuple[list[Block], set[str], str | None, li
                 known = [k for k in (*_STATE, *_ACCELERATION) if k in values]
                 if [c.name for c in item.children] != ["EPOCH", *known]:
                     problems.append(
-                        Problem(f"{source.name}:{item.line}", "state cannot be read", found=" ".join(values),
-                                allowed=f"EPOCH {' '.join(_STATE)} ({STANDARD}, section 5)")
+                        Problem(
+                            f"{source.name}:{item.line}",
+                            "state cannot be read",
+                            found=" ".join(values),
+                            allowed=f"EPOCH {' '.join(_STATE)} ({STANDARD}, section 5)",
+                        )
                     )
                     continue
                 _take(block, values["EPOCH"], [values[k] for k in known], item.line, source, problems)

@@ -9,15 +9,27 @@ from typing import Any
 import numpy as np
 import pandas as pd
 
-from shiftfix.api import Ephemeris, InputError, Problem, Source, itrs_from_geodetic, param, parse_quantity, tai_ns_from_texts
+from shiftfix.api import (
+    Ephemeris,
+    InputError,
+    Problem,
+    Source,
+    itrs_from_geodetic,
+    param,
+    parse_quantity,
+    tai_ns_from_texts,
+)
 from shiftfix_ingest.source_files import SourceFile, binary_problem, open_sources
 
 _GEODETIC = ("latitude", "longitude", "height")
 _CARTESIAN = ("x", "y", "z")
 _ROLES = ("time", "object", *_GEODETIC, *_CARTESIAN, "vx", "vy", "vz", "clock")
-_UNIT = {r: "m" for r in (*_CARTESIAN, "height")} | {r: "deg" for r in ("latitude", "longitude")} | {
-    r: "m/s" for r in ("vx", "vy", "vz")
-} | {"clock": "s"}
+_UNIT = (
+    {r: "m" for r in (*_CARTESIAN, "height")}
+    | {r: "deg" for r in ("latitude", "longitude")}
+    | {r: "m/s" for r in ("vx", "vy", "vz")}
+    | {"clock": "s"}
+)
 
 
 @dataclass(frozen=True)
@@ -25,15 +37,22 @@ class PositionsParams:
     """Parameters of `ingest.positions`."""
 
     files: tuple = param("text files with a header line, plain or gzip", path="files")
-    columns: dict = param("what stands where: role = header name; roles time, object, latitude, longitude, height or x, y, z, vx, vy, vz, clock", default={})
+    columns: dict = param(
+        "what stands where: role = header name; roles time, object, latitude, longitude, height or x, y, z, vx, vy, vz, clock",
+        default={},
+    )
     units: dict = param("unit of a column by role; SI and degrees when absent", default={})
     time_scale: str = param("scale of the time column", default="", choices=("UTC", "TAI", "TT", "GPS"))
     object: str = param("name of the mover where no column has it", default="")
     frame: str = param("frame of x, y, z", default="ITRS", choices=("ITRS", "GCRS"))
     height_kind: str = param("of the height column", default="", choices=("ellipsoid", "sea level"))
-    undulation: float | None = param("geoid above the ellipsoid, for heights above sea level", default=None, unit="m", minimum=-120.0, maximum=120.0)
+    undulation: float | None = param(
+        "geoid above the ellipsoid, for heights above sea level", default=None, unit="m", minimum=-120.0, maximum=120.0
+    )
     position_sigma: float = param("1-sigma of each coordinate", default=10.0, unit="m", minimum=0.0)
-    clock_without_relativity: bool = param("whether the clock column lacks the periodic relativistic term", default=True)
+    clock_without_relativity: bool = param(
+        "whether the clock column lacks the periodic relativistic term", default=True
+    )
     separator: str = param("field separator", default=",")
 
 
@@ -60,25 +79,46 @@ def read_positions(inputs: Any, params: PositionsParams, context: Any) -> dict[s
             sources.append(Source(file.name, file.sha256, len(frame), len(frame), 0))
     if problems:
         raise InputError(problems)
-    rows = pd.concat(frames, ignore_index=True).sort_values(["object_id", "time_tai_ns"], kind="stable", ignore_index=True)
+    rows = pd.concat(frames, ignore_index=True).sort_values(
+        ["object_id", "time_tai_ns"], kind="stable", ignore_index=True
+    )
     same = (rows["object_id"].to_numpy()[1:] == rows["object_id"].to_numpy()[:-1]) & (np.diff(rows["time_tai_ns"]) == 0)
     if same.any():
         k = int(np.flatnonzero(same)[0])
-        raise InputError(Problem(files[0].name, f"two positions of {rows['object_id'][k]} at one time", remedy="keep one"))
+        raise InputError(
+            Problem(files[0].name, f"two positions of {rows['object_id'][k]} at one time", remedy="keep one")
+        )
     geodetic = "latitude" in params.columns
     return {
         "ephemeris": Ephemeris(
-            rows=rows, frame="ITRS" if geodetic else params.frame, sources=tuple(sources), position_sigma_m=params.position_sigma,
+            rows=rows,
+            frame="ITRS" if geodetic else params.frame,
+            sources=tuple(sources),
+            position_sigma_m=params.position_sigma,
             clock_excludes_periodic_relativity=params.clock_without_relativity,
         )
     }
 
 
 def _declaration_problems(params: PositionsParams, where: str) -> list[Problem]:
-    out = [Problem(f"{where}.columns.{r}", "unknown role of a column", found=r, allowed=", ".join(_ROLES)) for r in params.columns if r not in _ROLES]
+    out = [
+        Problem(f"{where}.columns.{r}", "unknown role of a column", found=r, allowed=", ".join(_ROLES))
+        for r in params.columns
+        if r not in _ROLES
+    ]
     geodetic, cartesian = ([r for r in kind if r in params.columns] for kind in (_GEODETIC, _CARTESIAN))
-    if len(geodetic) != 3 * bool(geodetic) or len(cartesian) != 3 * bool(cartesian) or bool(geodetic) == bool(cartesian):
-        out.append(Problem(f"{where}.columns", "a position is latitude, longitude and height, or x, y and z", found=", ".join(geodetic + cartesian)))
+    if (
+        len(geodetic) != 3 * bool(geodetic)
+        or len(cartesian) != 3 * bool(cartesian)
+        or bool(geodetic) == bool(cartesian)
+    ):
+        out.append(
+            Problem(
+                f"{where}.columns",
+                "a position is latitude, longitude and height, or x, y and z",
+                found=", ".join(geodetic + cartesian),
+            )
+        )
     if "time" not in params.columns:
         out.append(Problem(f"{where}.columns", "the time column is not declared"))
     if not params.time_scale:
@@ -117,19 +157,35 @@ def _read(file: SourceFile, params: PositionsParams) -> tuple[pd.DataFrame | Non
         factor = parse_quantity(f"1 {params.units[role]}", _UNIT[role]).value if role in params.units else 1.0
         column = pd.to_numeric(table[params.columns[role]], errors="coerce").to_numpy(float) * factor
         bad = np.flatnonzero(~np.isfinite(column)) if role != "clock" else np.empty(0, int)
-        problems += [Problem(f"{file.name}:{k + 2 + skipped}", f"{role} is not a finite number", found=str(table[params.columns[role]][k])) for k in bad[:20]]
+        problems += [
+            Problem(
+                f"{file.name}:{k + 2 + skipped}",
+                f"{role} is not a finite number",
+                found=str(table[params.columns[role]][k]),
+            )
+            for k in bad[:20]
+        ]
         values[role] = column
     if problems:
         return None, problems
     if "latitude" in values:
         if np.abs(values["latitude"]).max() > 90:
-            return None, [Problem(file.name, "latitude out of range", allowed="-90 to 90 deg", remedy="are latitude and longitude swapped?")]
+            return None, [
+                Problem(
+                    file.name,
+                    "latitude out of range",
+                    allowed="-90 to 90 deg",
+                    remedy="are latitude and longitude swapped?",
+                )
+            ]
         height = values["height"] + (params.undulation or 0.0)
         position = itrs_from_geodetic(np.radians(values["latitude"]), np.radians(values["longitude"]), height)
     else:
         position = np.column_stack([values[r] for r in _CARTESIAN])
     name = table[params.columns["object"]] if "object" in params.columns else params.object
-    frame = pd.DataFrame({"object_id": name, "time_tai_ns": times, "x_m": position[:, 0], "y_m": position[:, 1], "z_m": position[:, 2]})
+    frame = pd.DataFrame(
+        {"object_id": name, "time_tai_ns": times, "x_m": position[:, 0], "y_m": position[:, 1], "z_m": position[:, 2]}
+    )
     for role in ("vx", "vy", "vz"):
         if role in values:
             frame[f"{role}_m_s"] = values[role]

@@ -64,7 +64,8 @@ class RinexParams:
     start: str = param("UTC from which records are read, as in 2026-03-01T06:00:00Z; empty: all", default="")
     stop: str = param("UTC until which records are read; empty: all", default="")
     on_repeat: str = param(
-        "refuse: the same file twice is an error; ignore: it is used once and noted", default="refuse",
+        "refuse: the same file twice is an error; ignore: it is used once and noted",
+        default="refuse",
         choices=("refuse", "ignore"),
     )
 

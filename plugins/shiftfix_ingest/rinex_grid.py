@@ -128,8 +128,14 @@ def station_grid(
                 problems += _doppler_sign(file, times, row, column, raw, reversed_doppler)
     interval = recording_interval_s(times)
     phases = PhaseGrid(
-        times, interval, [raw["L", 0], raw["L", 1]], [raw["C", 0], raw["C", 1]], ((lock[0] | lock[1]) & 1) > 0,
-        ((lock[0] | lock[1]) & 2) > 0, power, signal,
+        times,
+        interval,
+        [raw["L", 0], raw["L", 1]],
+        [raw["C", 0], raw["C", 1]],
+        ((lock[0] | lock[1]) & 1) > 0,
+        ((lock[0] | lock[1]) & 2) > 0,
+        power,
+        signal,
     )
     frequencies = [list(BANDS[n[0]].values()) for n in names]
     f1, f2 = np.array([f[0] for f in frequencies]), np.array([f[1] for f in frequencies])
@@ -150,9 +156,11 @@ def _lacking(file: ObservationFile, system: str, used: list, combined: bool, obs
     word = "carrier phase" if observable == "phase" else "Doppler"
     return [
         Problem(
-            f"{file.source.name}:{file.header.lines}", f"no {word} on band {band} of system {system}",
-            found=" ".join(file.header.codes_of(system)), allowed=f"a code {'LD'[kind > 0]}{band}",
-            remedy="take another observable, or combination = \"single\"" if combined else "take another observable",
+            f"{file.source.name}:{file.header.lines}",
+            f"no {word} on band {band} of system {system}",
+            found=" ".join(file.header.codes_of(system)),
+            allowed=f"a code {'LD'[kind > 0]}{band}",
+            remedy='take another observable, or combination = "single"' if combined else "take another observable",
         )
         for k, band in enumerate(bands)
         if used[3 * k + kind] is None and system == "G"
@@ -184,7 +192,8 @@ def _doppler_sign(file: ObservationFile, times, row, column, raw, reversed_doppl
                 return []
             return [
                 Problem(
-                    file.source.name, "Doppler has the opposite sign of the change of range",
+                    file.source.name,
+                    "Doppler has the opposite sign of the change of range",
                     allowed="positive for approach (RINEX)",
                     remedy=f'set params.doppler_sign = "{"rinex" if reversed_doppler else "reversed"}"',
                 )

@@ -73,8 +73,12 @@ def read_header(lines: list[str], name: str) -> tuple[Header, list[Problem]]:
     first = lines[0] if lines else ""
     if first[_LABEL:].strip() != "RINEX VERSION / TYPE":
         return header, [
-            Problem(f"{name}:1", "not a RINEX file", found=repr(first.strip()[:70]),
-                    allowed="'RINEX VERSION / TYPE' in columns 61-80 of the first line")
+            Problem(
+                f"{name}:1",
+                "not a RINEX file",
+                found=repr(first.strip()[:70]),
+                allowed="'RINEX VERSION / TYPE' in columns 61-80 of the first line",
+            )
         ]
     try:
         header.version = float(first[:9])

@@ -124,8 +124,11 @@ class _Walk:
         except ValueError as error:
             raise _Broken(
                 Problem(
-                    f"{self.name}:{row + 1}", "epoch line cannot be read", found=repr(self.lines[row][:60]),
-                    allowed=self._shape(), remedy=str(error),
+                    f"{self.name}:{row + 1}",
+                    "epoch line cannot be read",
+                    found=repr(self.lines[row][:60]),
+                    allowed=self._shape(),
+                    remedy=str(error),
                 )
             ) from None
         return tai + behind_s * _NS
@@ -155,9 +158,11 @@ class _Walk:
         if until > len(self.lines):
             raise _Broken(
                 Problem(
-                    f"{self.name}:{row + 1}", "the file is truncated",
+                    f"{self.name}:{row + 1}",
+                    "the file is truncated",
                     found=f"{len(self.lines) - row - 1} lines after this epoch line",
-                    allowed=f"{until - row - 1} lines for {count} satellites", remedy="fetch the file again",
+                    allowed=f"{until - row - 1} lines for {count} satellites",
+                    remedy="fetch the file again",
                 )
             )
 

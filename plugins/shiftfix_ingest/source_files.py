@@ -109,7 +109,9 @@ def repeat_problems(notes: Iterable[str], on_repeat: str) -> list[Problem]:
         return []
     return [
         Problem(
-            note.split(" holds ")[0], "the same file is given twice", found=note,
+            note.split(" holds ")[0],
+            "the same file is given twice",
+            found=note,
             remedy='name it once, or set on_repeat = "ignore"',
         )
         for note in notes

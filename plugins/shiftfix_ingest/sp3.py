@@ -19,8 +19,16 @@ from shiftfix.api import Ephemeris, InputError, Problem, Source, param, tai_ns_f
 from shiftfix_ingest.source_files import SourceFile, binary_problem, head_text, open_sources, repeat_problems
 
 _NO_CLOCK_US = 999999.0  # 999999.999999 marks an absent clock; any value at or above this is one
-_SCALES = {"GPS": ("GPS", 0), "GAL": ("GPS", 0), "QZS": ("GPS", 0), "IRN": ("GPS", 0), "UTC": ("UTC", 0),
-           "GLO": ("UTC", 0), "TAI": ("TAI", 0), "BDT": ("GPS", 14)}  # BDT = GPS - 14 s
+_SCALES = {
+    "GPS": ("GPS", 0),
+    "GAL": ("GPS", 0),
+    "QZS": ("GPS", 0),
+    "IRN": ("GPS", 0),
+    "UTC": ("UTC", 0),
+    "GLO": ("UTC", 0),
+    "TAI": ("TAI", 0),
+    "BDT": ("GPS", 14),
+}  # BDT = GPS - 14 s
 _EQUAL_M = 1e-3  # records of two files that agree to this are the same; SP3 gives 1 mm
 
 
@@ -32,7 +40,8 @@ class Sp3Params:
     satellites: tuple[str, ...] = param("satellites to read, as in G17; empty means all", default=())
     position_sigma: float = param("1-sigma of each coordinate", default=0.05, unit="m", minimum=0.0)
     on_repeat: str = param(
-        "refuse: the same file twice is an error; ignore: it is used once and noted", default="refuse",
+        "refuse: the same file twice is an error; ignore: it is used once and noted",
+        default="refuse",
         choices=("refuse", "ignore"),
     )
 
@@ -75,8 +84,10 @@ def read_sp3(inputs: Any, params: Sp3Params, context: Any) -> dict[str, Ephemeri
     if not problems and (wanted - seen or not seen):
         problems.append(
             Problem(
-                ", ".join(s.name for s in sources), "satellites without any position",
-                found=", ".join(sorted(wanted - seen)) or "none in the files", allowed=", ".join(sorted(seen)),
+                ", ".join(s.name for s in sources),
+                "satellites without any position",
+                found=", ".join(sorted(wanted - seen)) or "none in the files",
+                allowed=", ".join(sorted(seen)),
                 remedy="correct params.satellites or add the file that holds them",
             )
         )
@@ -89,7 +100,9 @@ def read_sp3(inputs: Any, params: Sp3Params, context: Any) -> dict[str, Ephemeri
         if records.absent:
             context.logger.info(
                 "%s: %d records without position left out (0.000000), first at line %d",
-                source.name, len(records.absent), records.absent[0],
+                source.name,
+                len(records.absent),
+                records.absent[0],
             )
     return {
         "ephemeris": Ephemeris(
@@ -144,8 +157,12 @@ def _parse(source: SourceFile, wanted: set[str]) -> tuple[_Records, list[Problem
     if not recognise(source.path, source.data):
         first = source.data[:60].decode("latin-1").splitlines()[:1]
         return out, [
-            Problem(f"{source.name}:1", "not an SP3 file", found=repr(first[0] if first else ""),
-                    allowed="a first line such as '#cP2021  1  1  0  0  0.00000000      96 ORBIT IGb14 HLM  IGS'")
+            Problem(
+                f"{source.name}:1",
+                "not an SP3 file",
+                found=repr(first[0] if first else ""),
+                allowed="a first line such as '#cP2021  1  1  0  0  0.00000000      96 ORBIT IGb14 HLM  IGS'",
+            )
         ]
     lines = source.data.decode("latin-1").splitlines()
     problems: list[Problem] = []
@@ -184,8 +201,12 @@ def _parse(source: SourceFile, wanted: set[str]) -> tuple[_Records, list[Problem
                 clock = float(line[46:60]) if line[46:60].strip() else 999999.999999
             except ValueError:
                 problems.append(
-                    Problem(where, "position record cannot be read", found=line.rstrip(),
-                            allowed="PG17 x y z [km] clock [us], 14 columns each from column 5")
+                    Problem(
+                        where,
+                        "position record cannot be read",
+                        found=line.rstrip(),
+                        allowed="PG17 x y z [km] clock [us], 14 columns each from column 5",
+                    )
                 )
                 continue
             if not np.isfinite([*xyz, clock]).all():
@@ -224,7 +245,8 @@ def _whole(source: SourceFile, lines: list[str], epochs: int, ended: bool) -> li
         return [Problem(f"{source.name}:1", "number of epochs cannot be read", found=lines[0].rstrip())]
     return [
         Problem(
-            f"{source.name}:{len(lines)}", "the file is truncated" if not ended else "number of epochs does not agree",
+            f"{source.name}:{len(lines)}",
+            "the file is truncated" if not ended else "number of epochs does not agree",
             found=f"{epochs} epochs, {'EOF line' if ended else 'no EOF line'}",
             allowed=f"{announced} epochs and an EOF line",
             remedy="fetch the file again",

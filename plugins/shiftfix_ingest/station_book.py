@@ -1,14 +1,14 @@
 """Station book and emitter book: TOML files in which every quantity has a unit and every place a datum.
 
-    [stations.ORREL]
-    latitude = "-38.91 deg"
-    longitude = "-23.12 deg"
-    height = "118 m"
-    height_kind = "ellipsoid"          # or "sea level", then with undulation = "12.3 m"
-    datum = "WGS84"
-    position_sigma = "10 m"
-    reference = "gnss-disciplined"     # class, or offset = "3e-8 +/- 1e-7"
-    clock = "pps"                      # class, or time_bias = "0 s +/- 1 ms"
+[stations.ORREL]
+latitude = "-38.91 deg"
+longitude = "-23.12 deg"
+height = "118 m"
+height_kind = "ellipsoid"          # or "sea level", then with undulation = "12.3 m"
+datum = "WGS84"
+position_sigma = "10 m"
+reference = "gnss-disciplined"     # class, or offset = "3e-8 +/- 1e-7"
+clock = "pps"                      # class, or time_bias = "0 s +/- 1 ms"
 """
 
 from __future__ import annotations
@@ -47,9 +47,34 @@ DATUMS = ("WGS84", "GRS80", "ETRS89")
 """Ellipsoidal datums that agree with WGS84 to a metre; any ITRF realisation is allowed too."""
 
 _FIELDS = (
-    "latitude", "longitude", "height", "height_kind", "undulation", "datum", "x", "y", "z", "frame", "vx", "vy", "vz", "epoch",
-    "antenna_up", "antenna_east", "antenna_north", "position_sigma", "reference", "offset", "drift", "clock", "time_bias",
-    "track", "valid_from", "valid_until", "chain", "note",
+    "latitude",
+    "longitude",
+    "height",
+    "height_kind",
+    "undulation",
+    "datum",
+    "x",
+    "y",
+    "z",
+    "frame",
+    "vx",
+    "vy",
+    "vz",
+    "epoch",
+    "antenna_up",
+    "antenna_east",
+    "antenna_north",
+    "position_sigma",
+    "reference",
+    "offset",
+    "drift",
+    "clock",
+    "time_bias",
+    "track",
+    "valid_from",
+    "valid_until",
+    "chain",
+    "note",
 )
 
 
@@ -90,9 +115,23 @@ class BookReader:
         for field in body:
             if field not in fields:
                 close = difflib.get_close_matches(field, fields, 1)
-                self.add((*path, field), "unknown field", found=field, allowed=", ".join(fields), remedy=f"did you mean {close[0]}?" if close else "")
+                self.add(
+                    (*path, field),
+                    "unknown field",
+                    found=field,
+                    allowed=", ".join(fields),
+                    remedy=f"did you mean {close[0]}?" if close else "",
+                )
 
-    def quantity(self, path: tuple, body: Mapping[str, Any], field: str, unit: str, default: float | None = None, sigma: bool = False):
+    def quantity(
+        self,
+        path: tuple,
+        body: Mapping[str, Any],
+        field: str,
+        unit: str,
+        default: float | None = None,
+        sigma: bool = False,
+    ):
         """Return a value in SI (or value and sigma), the default when absent, None after a problem."""
         if field not in body:
             return (default, None) if sigma else default
@@ -109,7 +148,9 @@ class BookReader:
         try:
             return tai_ns_from_utc(str(body[field]))
         except ValueError as error:
-            self.add((*path, field), str(error), found=repr(body[field]), allowed='UTC text such as "2026-03-01T00:00:00Z"')
+            self.add(
+                (*path, field), str(error), found=repr(body[field]), allowed='UTC text such as "2026-03-01T00:00:00Z"'
+            )
             return default
 
     def place(self, path: tuple, body: Mapping[str, Any]) -> np.ndarray | None:
@@ -118,10 +159,19 @@ class BookReader:
         cartesian = [f for f in ("x", "y", "z") if f in body]
         before = len(self.problems)
         if geodetic and cartesian:
-            self.add(path, "both geodetic and Cartesian coordinates", found=", ".join(geodetic + cartesian), remedy="keep one kind")
+            self.add(
+                path,
+                "both geodetic and Cartesian coordinates",
+                found=", ".join(geodetic + cartesian),
+                remedy="keep one kind",
+            )
             return None
         if not geodetic and not cartesian:
-            self.add(path, "no position", allowed="latitude, longitude, height with datum and height_kind; or x, y, z with frame; or track")
+            self.add(
+                path,
+                "no position",
+                allowed="latitude, longitude, height with datum and height_kind; or x, y, z with frame; or track",
+            )
             return None
         position = self._cartesian(path, body) if cartesian else self._geodetic(path, body)
         offset = [self.quantity(path, body, f, "m", 0.0) for f in ("antenna_east", "antenna_north", "antenna_up")]
@@ -142,13 +192,24 @@ class BookReader:
             values.append(self.quantity(path, body, f, "m"))
         frame = body.get("frame")
         if not (isinstance(frame, str) and (frame.upper().startswith(("ITRF", "IGS")) or frame in DATUMS)):
-            self.add((*path, "frame") if frame else path, "Cartesian coordinates without their frame", found=repr(frame) if frame else "", allowed="an ITRF or IGS realisation such as ITRF2014, or " + ", ".join(DATUMS))
+            self.add(
+                (*path, "frame") if frame else path,
+                "Cartesian coordinates without their frame",
+                found=repr(frame) if frame else "",
+                allowed="an ITRF or IGS realisation such as ITRF2014, or " + ", ".join(DATUMS),
+            )
             return None
         if None in values:
             return None
         radius = math.sqrt(sum(v * v for v in values))
         if not 6.3e6 < radius < 6.5e6:
-            self.add((*path, "x"), "the position is not near the Earth's surface", found=f"{radius / 1e3:.1f} km from the centre", allowed="6300 to 6500 km", remedy="check unit and sign")
+            self.add(
+                (*path, "x"),
+                "the position is not near the Earth's surface",
+                found=f"{radius / 1e3:.1f} km from the centre",
+                allowed="6300 to 6500 km",
+                remedy="check unit and sign",
+            )
             return None
         return np.array(values)
 
@@ -156,31 +217,51 @@ class BookReader:
         datum = body.get("datum")
         if not isinstance(datum, str) or not (datum in DATUMS or datum.upper().startswith("ITRF")):
             self.add(
-                (*path, "datum") if datum else path, "station without datum" if not datum else "datum that is not geocentric",
-                found=repr(datum) if datum else "", allowed=", ".join(DATUMS) + " or an ITRF realisation",
+                (*path, "datum") if datum else path,
+                "station without datum" if not datum else "datum that is not geocentric",
+                found=repr(datum) if datum else "",
+                allowed=", ".join(DATUMS) + " or an ITRF realisation",
                 remedy="say on which datum the coordinates are; transform local datums first (they differ by up to 1 km)",
             )
         latitude = self.quantity(path, body, "latitude", "deg")
         longitude = self.quantity(path, body, "longitude", "deg")
         height = self.quantity(path, body, "height", "m")
-        for field, value in (("latitude", latitude), ("longitude", longitude), ("height", height)):
+        for field, _value in (("latitude", latitude), ("longitude", longitude), ("height", height)):
             if field not in body:
                 self.add(path, f"{field} is missing", allowed="latitude, longitude and height")
         if latitude is not None and abs(latitude) > 90.0:
-            self.add((*path, "latitude"), "latitude out of range", found=f"{latitude} deg", allowed="-90 to 90 deg", remedy="are latitude and longitude swapped?")
+            self.add(
+                (*path, "latitude"),
+                "latitude out of range",
+                found=f"{latitude} deg",
+                allowed="-90 to 90 deg",
+                remedy="are latitude and longitude swapped?",
+            )
             latitude = None
         if longitude is not None and not -180.0 <= longitude <= 360.0:
-            self.add((*path, "longitude"), "longitude out of range", found=f"{longitude} deg", allowed="-180 to 360 deg")
+            self.add(
+                (*path, "longitude"), "longitude out of range", found=f"{longitude} deg", allowed="-180 to 360 deg"
+            )
             longitude = None
         kind = body.get("height_kind")
         if kind == "sea level":
             undulation = self.quantity(path, body, "undulation", "m")
             if "undulation" not in body:
-                self.add((*path, "height_kind"), "height above sea level without undulation", remedy="add undulation = \"... m\" (geoid above ellipsoid), or give the ellipsoidal height")
+                self.add(
+                    (*path, "height_kind"),
+                    "height above sea level without undulation",
+                    remedy='add undulation = "... m" (geoid above ellipsoid), or give the ellipsoidal height',
+                )
             elif height is not None and undulation is not None:
                 height = height + undulation
         elif kind != "ellipsoid":
-            self.add((*path, "height_kind") if kind else path, "the kind of height is not said", found=repr(kind) if kind else "", allowed='height_kind = "ellipsoid" or "sea level"', remedy="the two differ by up to 100 m")
+            self.add(
+                (*path, "height_kind") if kind else path,
+                "the kind of height is not said",
+                found=repr(kind) if kind else "",
+                allowed='height_kind = "ellipsoid" or "sea level"',
+                remedy="the two differ by up to 100 m",
+            )
         if height is not None and not -500.0 <= height <= 9000.0:
             self.add((*path, "height"), "height out of range", found=f"{height} m", allowed="-500 to 9000 m")
             height = None
@@ -219,18 +300,29 @@ class BookReader:
             sigma, drift_sigma = REFERENCES[kind]
         elif kind != "unknown":
             close = difflib.get_close_matches(str(kind), REFERENCES, 1)
-            self.add((*path, "reference"), "unknown class of reference", found=repr(kind), allowed=", ".join(REFERENCES) + ", unknown", remedy=f"did you mean {close[0]}?" if close else "")
+            self.add(
+                (*path, "reference"),
+                "unknown class of reference",
+                found=repr(kind),
+                allowed=", ".join(REFERENCES) + ", unknown",
+                remedy=f"did you mean {close[0]}?" if close else "",
+            )
         offset, own = self.quantity(path, body, "offset", "1", 0.0, sigma=True)
         drift, own_drift = self.quantity(path, body, "drift", "1/s", 0.0, sigma=True)
         return {
-            "reference_class": str(kind), "offset_1": offset or 0.0, "offset_sigma_1": own if own is not None else sigma,
-            "drift_1_s": drift or 0.0, "drift_sigma_1_s": own_drift if own_drift is not None else drift_sigma,
+            "reference_class": str(kind),
+            "offset_1": offset or 0.0,
+            "offset_sigma_1": own if own is not None else sigma,
+            "drift_1_s": drift or 0.0,
+            "drift_sigma_1_s": own_drift if own_drift is not None else drift_sigma,
         }
 
     def _clock(self, path: tuple, body: Mapping[str, Any]) -> dict[str, Any]:
         kind = body.get("clock", "unknown")
         sigma = CLOCKS.get(kind, 0.0)
         if kind not in CLOCKS and kind != "unknown":
-            self.add((*path, "clock"), "unknown class of clock", found=repr(kind), allowed=", ".join(CLOCKS) + ", unknown")
+            self.add(
+                (*path, "clock"), "unknown class of clock", found=repr(kind), allowed=", ".join(CLOCKS) + ", unknown"
+            )
         bias, own = self.quantity(path, body, "time_bias", "s", 0.0, sigma=True)
         return {"clock_class": str(kind), "time_bias_s": bias or 0.0, "time_sigma_s": own if own is not None else sigma}

@@ -46,7 +46,9 @@ def read_stations(inputs, params: BookParams, context) -> dict:
     tracks = {}
     for ephemeris in inputs.get("ephemeris") or ():
         for name in dict.fromkeys(ephemeris.array("object_id").astype(str)):
-            tracks[name] = ephemeris.with_rows(ephemeris.rows[ephemeris.array("object_id").astype(str) == name].reset_index(drop=True))
+            tracks[name] = ephemeris.with_rows(
+                ephemeris.rows[ephemeris.array("object_id").astype(str) == name].reset_index(drop=True)
+            )
     rows, moving = [], {}
     seen: dict[str, list[tuple[tuple, dict]]] = {}
     for path, name, body in book.entries("stations"):
@@ -56,12 +58,25 @@ def read_stations(inputs, params: BookParams, context) -> dict:
         track = row.pop("track", None)
         if track is not None:
             if track not in tracks:
-                book.add((*path, "track"), "no connected ephemeris holds this track", found=repr(track), allowed=", ".join(tracks) or "none is connected", remedy="connect the ephemeris to inputs.ephemeris")
+                book.add(
+                    (*path, "track"),
+                    "no connected ephemeris holds this track",
+                    found=repr(track),
+                    allowed=", ".join(tracks) or "none is connected",
+                    remedy="connect the ephemeris to inputs.ephemeris",
+                )
                 continue
             moving[name] = tracks[track]
         for other_path, other in seen.setdefault(name, []):
-            if row["valid_from_tai_ns"] <= other["valid_until_tai_ns"] and other["valid_from_tai_ns"] <= row["valid_until_tai_ns"]:
-                book.add(path, f"station id {name!r} clashes with the entry at {book.where(*other_path)}", remedy="give each station its own id, or validity dates that do not overlap")
+            if (
+                row["valid_from_tai_ns"] <= other["valid_until_tai_ns"]
+                and other["valid_from_tai_ns"] <= row["valid_until_tai_ns"]
+            ):
+                book.add(
+                    path,
+                    f"station id {name!r} clashes with the entry at {book.where(*other_path)}",
+                    remedy="give each station its own id, or validity dates that do not overlap",
+                )
         seen[name].append((path, row))
         rows.append(row)
     if book.problems:
@@ -72,8 +87,23 @@ def read_stations(inputs, params: BookParams, context) -> dict:
 def read_emitters(inputs, params: BookParams, context) -> dict:
     """Return the table of known emitters: rest frequency with its 1-sigma, and a place unless an ephemeris has it."""
     book, source = _open(params, context)
-    fields = ("latitude", "longitude", "height", "height_kind", "undulation", "datum", "x", "y", "z", "frame", "antenna_up",
-              "antenna_east", "antenna_north", "rest_frequency", "note")
+    fields = (
+        "latitude",
+        "longitude",
+        "height",
+        "height_kind",
+        "undulation",
+        "datum",
+        "x",
+        "y",
+        "z",
+        "frame",
+        "antenna_up",
+        "antenna_east",
+        "antenna_north",
+        "rest_frequency",
+        "note",
+    )
     rows = []
     for path, name, body in book.entries("emitters"):
         book.known(path, body, fields)
@@ -96,4 +126,3 @@ def recognise(path, first_bytes: bytes) -> bool:
     """Return whether the head has a stations table."""
     text = first_bytes.decode("utf-8", "replace")
     return path.suffix == ".toml" and any(mark in text for mark in ("[stations.", "[[stations]]"))
-

@@ -44,11 +44,13 @@ class TdmParams:
     stations: Mapping[str, str] = param("station id by participant name; default: the name itself", default={})
     emitters: Mapping[str, str] = param("emitter id by participant name; default: the name itself", default={})
     corrections: str = param(
-        "applied: data with CORRECTION_RECEIVE / _DOPPLER in them; undone: without", default="applied",
+        "applied: data with CORRECTION_RECEIVE / _DOPPLER in them; undone: without",
+        default="applied",
         choices=("applied", "undone"),
     )
     on_repeat: str = param(
-        "refuse: the same file twice is an error; ignore: it is used once and noted", default="refuse",
+        "refuse: the same file twice is an error; ignore: it is used once and noted",
+        default="refuse",
         choices=("refuse", "ignore"),
     )
 
@@ -119,7 +121,9 @@ def _nothing(found: Sequence[_Read]) -> list[Problem]:
         for reason, lines in one.rows.reasons().items():
             out.append(
                 Problem(
-                    f"{one.source.name}:{lines[0]}", reason, found=f"{len(lines)} records",
+                    f"{one.source.name}:{lines[0]}",
+                    reason,
+                    found=f"{len(lines)} records",
                     allowed="one-way received frequency or Doppler",
                 )
             )

@@ -82,8 +82,12 @@ def _from_lines(source: SourceFile) -> tuple[Message, list[Problem]]:
         elif line.kind == "comment":
             if not comment_fits:
                 problems.append(
-                    Problem(where, "comment out of place", found=f"COMMENT {line.value}"[:60],
-                            allowed=f"right after the version, META_START or DATA_START ({STANDARD}, 4.5.2)")
+                    Problem(
+                        where,
+                        "comment out of place",
+                        found=f"COMMENT {line.value}"[:60],
+                        allowed=f"right after the version, META_START or DATA_START ({STANDARD}, 4.5.2)",
+                    )
                 )
         elif line.kind == "marker":
             wanted = {
@@ -145,7 +149,9 @@ def _from_lines(source: SourceFile) -> tuple[Message, list[Problem]]:
         missing = {"header": "META_START", "meta": "META_STOP", "between": "DATA_START", "data": "DATA_STOP"}[place]
         problems.append(
             Problem(
-                f"{source.name}:{message.last_line}", f"the message ends without {missing}", allowed=f"{STANDARD}, 3.1",
+                f"{source.name}:{message.last_line}",
+                f"the message ends without {missing}",
+                allowed=f"{STANDARD}, 3.1",
                 remedy="the file is truncated: fetch it again",
             )
         )

@@ -228,9 +228,7 @@ def _notes(segment: Segment, where: str, corrections: str, doppler: bool) -> lis
     value, stated = segment.get(keyword), segment.get("CORRECTIONS_APPLIED")
     out = []
     if value:
-        out.append(
-            f"{where}: {keyword} = {value}, CORRECTIONS_APPLIED = {stated}; rows have it {corrections}"
-        )
+        out.append(f"{where}: {keyword} = {value}, CORRECTIONS_APPLIED = {stated}; rows have it {corrections}")
     rates = [r for r in segment.records if stem_and_index(r.keyword)[0] == "TRANSMIT_FREQ_RATE" and float(r.value)]
     if rates:
         out.append(f"{where}: the transmitter is ramped; the nominal frequency is that of its steps")

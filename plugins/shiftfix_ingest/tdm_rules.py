@@ -213,8 +213,14 @@ def _path(segment: Segment, name: str) -> list[Problem]:
         unknown = sorted({int(d) for d in value.split(",")} - known)
         if unknown:
             out.append(
-                _problem(name, line[keyword], f"{keyword} names a participant that is not defined", value,
-                         f"PARTICIPANT_{unknown[0]} in the metadata", "table 3-3")
+                _problem(
+                    name,
+                    line[keyword],
+                    f"{keyword} names a participant that is not defined",
+                    value,
+                    f"PARTICIPANT_{unknown[0]} in the metadata",
+                    "table 3-3",
+                )
             )
     if ("PATH_1" in line) != ("PATH_2" in line):
         out.append(

@@ -9,8 +9,21 @@ import math
 from shiftfix.api import Solution, utc_text
 
 COLUMNS = (
-    "time_utc", "station_id", "emitter_id", "interval_s", "received_frequency_hz", "model_frequency_hz", "residual_hz",
-    "normalised_residual_1", "sigma_hz", "weight_1", "elevation_deg", "flag", "reason", "source", "row_number",
+    "time_utc",
+    "station_id",
+    "emitter_id",
+    "interval_s",
+    "received_frequency_hz",
+    "model_frequency_hz",
+    "residual_hz",
+    "normalised_residual_1",
+    "sigma_hz",
+    "weight_1",
+    "elevation_deg",
+    "flag",
+    "reason",
+    "source",
+    "row_number",
 )
 
 
@@ -31,4 +44,8 @@ def _field(value) -> str:
     number = float(value)
     if not math.isfinite(number):
         return ""
-    return repr(int(number)) if number.is_integer() and abs(number) < 1e15 and not isinstance(value, float) else repr(number)
+    return (
+        repr(int(number))
+        if number.is_integer() and abs(number) < 1e15 and not isinstance(value, float)
+        else repr(number)
+    )

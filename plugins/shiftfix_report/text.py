@@ -60,15 +60,21 @@ def _position(solution: Solution) -> list[str]:
     g = solution.geodetic
     if g is not None:
         out.append(
-            f"  latitude {g['latitude_deg']:.6f} deg, longitude {g['longitude_deg']:.6f} deg, height {g['height_m']:.0f} m (WGS84 ellipsoid)"
+            f"  latitude {g['latitude_deg']:.6f} deg, longitude {g['longitude_deg']:.6f} deg, "
+            f"height {g['height_m']:.0f} m (WGS84 ellipsoid)"
         )
         for level, key in ((95, "ellipse_95"), (50, "ellipse_50")):
             e = g[key]
             out.append(
-                f"  {level} % ellipse: semi-axes {_length(e['semi_major_m'])} x {_length(e['semi_minor_m'])}, major axis {e['azimuth_deg']:.0f} deg from north"
+                f"  {level} % ellipse: semi-axes {_length(e['semi_major_m'])} x {_length(e['semi_minor_m'])}, "
+                f"major axis {e['azimuth_deg']:.0f} deg from north"
             )
     x, v = solution.position_m, solution.velocity_m_s
-    sigma = np.sqrt(np.maximum(np.diag(solution.covariance), 0.0)) if solution.covariance is not None else np.full(6, np.nan)
+    sigma = (
+        np.sqrt(np.maximum(np.diag(solution.covariance), 0.0))
+        if solution.covariance is not None
+        else np.full(6, np.nan)
+    )
     out.append(f"  {solution.frame} state, 1 sigma:")
     for k, axis in enumerate("xyz"):
         out.append(f"    {axis} {x[k]:18.3f} m +/- {sigma[k]:<10.3g} v{axis} {v[k]:14.6f} m/s +/- {sigma[3 + k]:.3g}")
@@ -95,7 +101,9 @@ def _others(solution: Solution) -> list[str]:
     out = ["What else fits"]
     if not solution.alternatives:
         return [*out, "  no other solution within the listed range", ""]
-    out.append(f"  odds of the solution above {solution.odds:.3f} (equal prior density of places; oscillator priors as declared)")
+    out.append(
+        f"  odds of the solution above {solution.odds:.3f} (equal prior density of places; oscillator priors as declared)"
+    )
     for a in solution.alternatives:
         away = float(np.linalg.norm(np.asarray(a.state["position_m"]) - solution.position_m))
         x = ", ".join(f"{c:.0f}" for c in a.state["position_m"])
@@ -107,13 +115,18 @@ def _stations(solution: Solution) -> list[str]:
     if not solution.stations:
         return []
     width = max(7, *(len(s.station_id) for s in solution.stations))
-    out = ["Stations", f"  {'station':<{width}}  {'offset':>11}  {'1 sigma':>8}  {'drift 1/s':>10}  {'rms Hz':>9}  {'used':>6}  {'left out':>8}"]
+    out = [
+        "Stations",
+        f"  {'station':<{width}}  {'offset':>11}  {'1 sigma':>8}  {'drift 1/s':>10}  {'rms Hz':>9}  {'used':>6}  {'left out':>8}",
+    ]
     for s in solution.stations:
         offset = f"{s.offset:.4e}" if s.offset is not None else "-"
         sigma = f"{s.offset_sigma:.1e}" if s.offset_sigma is not None else "-"
         drift = f"{s.drift_per_s:.2e}" if s.drift_per_s is not None else "-"
         rms = f"{s.residual_rms_hz:.4g}" if s.residual_rms_hz is not None else "-"
-        out.append(f"  {s.station_id:<{width}}  {offset:>11}  {sigma:>8}  {drift:>10}  {rms:>9}  {s.rows_used:>6}  {s.rows_rejected:>8}")
+        out.append(
+            f"  {s.station_id:<{width}}  {offset:>11}  {sigma:>8}  {drift:>10}  {rms:>9}  {s.rows_used:>6}  {s.rows_rejected:>8}"
+        )
     return [*out, ""]
 
 
@@ -121,16 +134,26 @@ def _trust(solution: Solution) -> list[str]:
     out = ["How far to trust it"]
     if solution.chi_square is not None:
         out.append(f"  chi-square {solution.chi_square:.1f} for {solution.degrees_of_freedom} degrees of freedom")
-    facts = {"converged": solution.converged, "all parameters determined": solution.rank_full, "other minimum found": solution.second_minimum}
+    facts = {
+        "converged": solution.converged,
+        "all parameters determined": solution.rank_full,
+        "other minimum found": solution.second_minimum,
+    }
     out.append("  " + ", ".join(f"{name}: {'yes' if value else 'no'}" for name, value in facts.items()))
     if solution.condition is not None:
-        out.append(f"  condition number of the scaled problem {solution.condition:.2g}, {solution.iterations} iterations")
+        out.append(
+            f"  condition number of the scaled problem {solution.condition:.2g}, {solution.iterations} iterations"
+        )
     if solution.budget:
         out.append("  error budget, 1 sigma (root sum square of the components):")
         width = max(len(n) for n in solution.budget)
         for name, part in solution.budget.items():
             out.append(f"    {name:<{width}}  {_length(part['position_m']):>10}  {part['velocity_m_s']:.3g} m/s")
-        out += _wrap("Time tags, coordinates, media and forces do not show in the residuals; they are in the error as declared.", 4, 0)
+        out += _wrap(
+            "Time tags, coordinates, media and forces do not show in the residuals; they are in the error as declared.",
+            4,
+            0,
+        )
     return [*out, ""]
 
 

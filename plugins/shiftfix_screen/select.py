@@ -39,5 +39,7 @@ def _check(kind: str, wanted, present) -> None:
     missing = [w for w in wanted if w not in set(present)]
     if missing:
         raise InputError(
-            Problem("frequencies", f"no row of {kind} {missing[0]!r}", allowed=", ".join(sorted(set(present))) or "none")
+            Problem(
+                "frequencies", f"no row of {kind} {missing[0]!r}", allowed=", ".join(sorted(set(present))) or "none"
+            )
         )

@@ -111,7 +111,9 @@ def build_arc(
     sigma = _relative_noise(table, correction)
     take = np.array([i for i in range(len(table)) if i not in excluded], dtype=np.int64)
     if not take.size:
-        raise InputError(Problem("frequencies", f"none of the {len(table)} rows can be used", found=_commonest(excluded)))
+        raise InputError(
+            Problem("frequencies", f"none of the {len(table)} rows can be used", found=_commonest(excluded))
+        )
     reference = float(np.median(table.array("nominal_frequency_hz")))
     bias = np.array([r.time_bias_s for r in receivers])[station]
     rows, order = observations(
@@ -131,7 +133,15 @@ def build_arc(
     day = utc_text(epoch_tai_ns)
     day_of_year = float((np.datetime64(day[:10]) - np.datetime64(day[:4] + "-01-01")).astype(int) + 1)
     return Arc(
-        table, rows, take[order], excluded, receivers, frame, epoch_tai_ns, Media(troposphere, day_of_year), tuple(notes)
+        table,
+        rows,
+        take[order],
+        excluded,
+        receivers,
+        frame,
+        epoch_tai_ns,
+        Media(troposphere, day_of_year),
+        tuple(notes),
     )
 
 
@@ -142,7 +152,9 @@ def _one_emitter(table: FrequencyTable, emitter: str) -> FrequencyTable:
             close = difflib.get_close_matches(emitter, present, 1)
             raise InputError(
                 Problem(
-                    "frequencies", f"no row of emitter {emitter!r}", allowed=", ".join(p or "(unnamed)" for p in present),
+                    "frequencies",
+                    f"no row of emitter {emitter!r}",
+                    allowed=", ".join(p or "(unnamed)" for p in present),
                     remedy=f"did you mean {close[0]}?" if close else "",
                 )
             )
@@ -150,7 +162,9 @@ def _one_emitter(table: FrequencyTable, emitter: str) -> FrequencyTable:
     if len(present) > 1:
         raise InputError(
             Problem(
-                "frequencies", "rows of several emitters", found=", ".join(p or "(unnamed)" for p in present),
+                "frequencies",
+                "rows of several emitters",
+                found=", ".join(p or "(unnamed)" for p in present),
                 remedy="name one with params.emitter",
             )
         )
@@ -174,8 +188,12 @@ def _calibration(table, offsets, station, receivers, excluded) -> dict[str, np.n
     for k, key in enumerate(zip(*(offsets.array(c) for c in columns), strict=True)):
         keys[(str(key[0]), int(key[1]) // 1000, round(float(key[2]), 6))] = k
     fields = {
-        "offset": "offset_1", "start": "time_offset_start_s", "stop": "time_offset_stop_s", "zenith": "zenith_correction_m",
-        "independent": "offset_sigma_1", "phase": "phase_sigma_s",
+        "offset": "offset_1",
+        "start": "time_offset_start_s",
+        "stop": "time_offset_stop_s",
+        "zenith": "zenith_correction_m",
+        "independent": "offset_sigma_1",
+        "phase": "phase_sigma_s",
     }
     arrays = {key: offsets.array(column) for key, column in fields.items()}
     span = _spans(offsets)

@@ -4,7 +4,17 @@ from __future__ import annotations
 
 import numpy as np
 
-from shiftfix.api import AnswerSettings, ClockModels, Considered, FitSettings, Gates, InputError, Problem, solve_arc, tai_ns_from_utc
+from shiftfix.api import (
+    AnswerSettings,
+    ClockModels,
+    Considered,
+    FitSettings,
+    Gates,
+    InputError,
+    Problem,
+    solve_arc,
+    tai_ns_from_utc,
+)
 from shiftfix_solve.arc import build_arc
 from shiftfix_solve.packing import pack
 from shiftfix_solve.search import bind_motion, rest_prior
@@ -27,8 +37,10 @@ def fix(inputs, params, context):
     if tuple(bound.motion.parameter_names) != tuple(starts.parameter_names):
         raise InputError(
             Problem(
-                f"node {context.node}", "the starting states belong to another form of the motion",
-                found=", ".join(starts.parameter_names), allowed=", ".join(bound.motion.parameter_names),
+                f"node {context.node}",
+                "the starting states belong to another form of the motion",
+                found=", ".join(starts.parameter_names),
+                allowed=", ".join(bound.motion.parameter_names),
             )
         )
     mean, sigma = rest_prior(starts.rest_frequency_hz, starts.rest_frequency_sigma_hz, arc.rows.reference_hz)
@@ -49,7 +61,11 @@ def fix(inputs, params, context):
     gates = Gates(params.downweight_beyond, params.reject_beyond, keep_all=params.loss == "plain")
     settings = AnswerSettings(
         fit=FitSettings(
-            clocks=clocks, media=arc.media, gates=gates, priors=tuple(bound.priors), check_cancelled=context.check_cancelled
+            clocks=clocks,
+            media=arc.media,
+            gates=gates,
+            priors=tuple(bound.priors),
+            check_cancelled=context.check_cancelled,
         ),
         considered=Considered(
             common_time_s=params.common_time_sigma,
@@ -69,10 +85,15 @@ def fix(inputs, params, context):
         elevation_mask_deg=params.elevation_mask,
         elevation_weighting=params.elevation_weighting == "sine",
     )
-    if (arc.rows.station >= 0).all() and clocks.datum != "auto" and clocks.datum not in {r.station_id for r in arc.receivers}:
+    if (
+        (arc.rows.station >= 0).all()
+        and clocks.datum != "auto"
+        and clocks.datum not in {r.station_id for r in arc.receivers}
+    ):
         raise InputError(
             Problem(
-                f"nodes.{context.node}.params.datum", f"no rows of the datum station {clocks.datum!r}",
+                f"nodes.{context.node}.params.datum",
+                f"no rows of the datum station {clocks.datum!r}",
                 allowed="auto, " + ", ".join(r.station_id for r in arc.receivers),
             )
         )

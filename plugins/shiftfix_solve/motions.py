@@ -25,7 +25,12 @@ def orbit(options, scene) -> BoundMotion:
     """Return an orbit about the Earth."""
     radiation, drag = options.radiation_scale_sigma > 0, options.drag_scale_sigma > 0
     motion = OrbitMotion(
-        scene.epoch_tai_ns, scene.span_s, scene.frame, Forces(drag=options.drag), estimate_radiation=radiation, estimate_drag=drag
+        scene.epoch_tai_ns,
+        scene.span_s,
+        scene.frame,
+        Forces(drag=options.drag),
+        estimate_radiation=radiation,
+        estimate_drag=drag,
     )
     sigmas = [s for s in (options.radiation_scale_sigma, options.drag_scale_sigma) if s > 0]
     priors = tuple(ValuePrior(6 + k, 1.0, s) for k, s in enumerate(sigmas))
@@ -48,7 +53,11 @@ def surface(options, scene) -> BoundMotion:
     motion = SurfaceMotion(scene.frame, legs=options.legs, turn_times_s=turns)
     names = motion.parameter_names
     priors = [ValuePrior(names.index("height_m"), options.height.value, options.height.sigma or 1.0)]
-    priors += [ValuePrior(k, 0.0, options.speed_sigma) for k, name in enumerate(names) if name.endswith("_m_s") or "_m_s_" in name]
+    priors += [
+        ValuePrior(k, 0.0, options.speed_sigma)
+        for k, name in enumerate(names)
+        if name.endswith("_m_s") or "_m_s_" in name
+    ]
     turn_index = [k for k, name in enumerate(names) if name.startswith("turn")]
     first, last = scene.span_s
     for k in turn_index:
@@ -71,7 +80,14 @@ def surface(options, scene) -> BoundMotion:
         return np.vstack(out)
 
     return BoundMotion(
-        "surface", motion, candidates, motion.states_batch, "ITRS", scene.frame, tuple(priors), scanned=tuple(turn_index)
+        "surface",
+        motion,
+        candidates,
+        motion.states_batch,
+        "ITRS",
+        scene.frame,
+        tuple(priors),
+        scanned=tuple(turn_index),
     )
 
 
@@ -105,7 +121,14 @@ def polynomial(options, scene) -> BoundMotion:
         return np.vstack(out)
 
     return BoundMotion(
-        "polynomial", motion, candidates, motion.states_batch, "ITRS", scene.frame, tuple(priors), options.height is not None
+        "polynomial",
+        motion,
+        candidates,
+        motion.states_batch,
+        "ITRS",
+        scene.frame,
+        tuple(priors),
+        options.height is not None,
     )
 
 

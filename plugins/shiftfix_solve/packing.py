@@ -48,9 +48,7 @@ def pack(answer, arc, bound, settings, starts, context) -> Solution:
         iterations=int(fit.iterations),
     )
     if not delivered:
-        return Solution(
-            covariance_reason=answer.text, stations=_stations(answer, arc, fit, None), **fields
-        )
+        return Solution(covariance_reason=answer.text, stations=_stations(answer, arc, fit, None), **fields)
     covariance = answer.parameter_covariance
     rest, rest_sigma, drift = _rest_frequency(fit, covariance, arc)
     return Solution(

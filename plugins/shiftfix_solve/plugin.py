@@ -96,7 +96,17 @@ def shiftfix_motions():
     """Return the motions of this plugin."""
     return (
         MotionSpec("orbit", "satellite: numerical orbit about the Earth", _orbit, OrbitOptions),
-        MotionSpec("surface", "vessel or vehicle: constant velocity on the ellipsoid, in one or several legs", _surface, SurfaceOptions),
+        MotionSpec(
+            "surface",
+            "vessel or vehicle: constant velocity on the ellipsoid, in one or several legs",
+            _surface,
+            SurfaceOptions,
+        ),
         MotionSpec("fixed", "emitter at rest on the ground", _fixed, FixedOptions),
-        MotionSpec("polynomial", "aircraft: straight line, with constant velocity or acceleration", _polynomial, PolynomialOptions),
+        MotionSpec(
+            "polynomial",
+            "aircraft: straight line, with constant velocity or acceleration",
+            _polynomial,
+            PolynomialOptions,
+        ),
     )

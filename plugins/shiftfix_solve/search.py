@@ -19,7 +19,9 @@ def bind_motion(name: str, options, context, arc):
         close = difflib.get_close_matches(name, known, 1)
         raise InputError(
             Problem(
-                f"nodes.{context.node}.params.motion", f"no motion is called {name!r}", allowed=", ".join(known),
+                f"nodes.{context.node}.params.motion",
+                f"no motion is called {name!r}",
+                allowed=", ".join(known),
                 remedy=f"did you mean {close[0]}?" if close else "",
             )
         )
@@ -64,14 +66,29 @@ def search(inputs, params, context):
     context.progress(0.1, "grid of candidates")
     candidates = bound.candidates(data)
     if not len(candidates):
-        raise InputError(Problem(f"node {context.node}", "no place of the search region is in view of the stations at the middle of the arc"))
+        raise InputError(
+            Problem(
+                f"node {context.node}",
+                "no place of the search region is in view of the stations at the middle of the arc",
+            )
+        )
     context.progress(0.3, f"{len(candidates)} candidates")
     states, cost = refine(
-        data, bound.states_batch, candidates, bound.motion.scales, priors=tuple(bound.priors),
+        data,
+        bound.states_batch,
+        candidates,
+        bound.motion.scales,
+        priors=tuple(bound.priors),
         check_cancelled=context.check_cancelled,
     )
     if not len(states):
-        raise InputError(Problem(f"node {context.node}", "no candidate of the search can be evaluated", remedy="check region, height and times"))
+        raise InputError(
+            Problem(
+                f"node {context.node}",
+                "no candidate of the search can be evaluated",
+                remedy="check region, height and times",
+            )
+        )
     # A start far above the best is no basin that could fit; a mirror differs by some tens at most.
     good = cost <= 10.0 * cost[0] + 400.0
     states, cost = states[good][: params.keep], cost[good][: params.keep]

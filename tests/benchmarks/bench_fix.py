@@ -49,11 +49,17 @@ def scene():
         z.append(worldline.log_received(satellite, ground, t - 0.5, t + 0.5))
         station.append(np.full(t.size, k))
         middle.append(t)
-        receivers.append(ground_receiver(f"S{k}", frame, itrs_from_geodetic(np.radians(latitude), np.radians(longitude), 40.0)))
+        receivers.append(
+            ground_receiver(f"S{k}", frame, itrs_from_geodetic(np.radians(latitude), np.radians(longitude), 40.0))
+        )
     station, middle, z = map(np.concatenate, (station, middle, z))
     rows, order = observations(
-        station=station, middle_s=middle, interval_s=np.ones(middle.size), received_hz=np.full(middle.size, 437e6),
-        sigma_hz=np.ones(middle.size), reference_hz=437e6,
+        station=station,
+        middle_s=middle,
+        interval_s=np.ones(middle.size),
+        received_hz=np.full(middle.size, 437e6),
+        sigma_hz=np.ones(middle.size),
+        reference_hz=437e6,
     )
     noise = rows.sigma * np.random.default_rng(1).standard_normal(middle.size)
     return replace(rows, z=z[order] + 4e-6 + noise), tuple(receivers), satellite, earth, frame, epoch
@@ -72,7 +78,9 @@ def main():
     rows, receivers, satellite, earth, frame, epoch = scene()
     truth = satellite.state(np.zeros(1))[0]
     span = (float(rows.start_s.min()) - 2, float(rows.stop_s.max()) + 1)
-    motion = OrbitMotion(epoch, span, frame, Forces(degree=0, sun=False, moon=False, relativity=False, radiation=False, drag=False))
+    motion = OrbitMotion(
+        epoch, span, frame, Forces(degree=0, sun=False, moon=False, relativity=False, radiation=False, drag=False)
+    )
     clocks = ClockModels(emitter="drift")
     settings = FitSettings(clocks=clocks)
     start = truth + np.array([5e3, -4e3, 3e3, 8.0, -6.0, 5.0])
@@ -92,10 +100,15 @@ def main():
     whole = best(lambda: fit_arc(rows, receivers, motion, start, settings), 10)
     warm = best(lambda: fit_arc(rows, receivers, motion, start, settings, forward=forward), 20)
     fit = fit_arc(rows, receivers, motion, start, settings)
-    print(f"warm fix: {warm * 1e3:.1f} ms ({whole * 1e3:.1f} ms with the receivers' events made anew), {fit.iterations} iterations, error {np.linalg.norm(fit.parameters[:3] - truth[:3]):.0f} m")
+    print(
+        f"warm fix: {warm * 1e3:.1f} ms ({whole * 1e3:.1f} ms with the receivers' events made anew), "
+        f"{fit.iterations} iterations, error {np.linalg.norm(fit.parameters[:3] - truth[:3]):.0f} m"
+    )
 
     def places(t):
-        return np.concatenate([worldline.Ground(earth, *PLACES[s], 40.0).position(t[rows.station == s]) for s in range(len(PLACES))])
+        return np.concatenate(
+            [worldline.Ground(earth, *PLACES[s], 40.0).position(t[rows.station == s]) for s in range(len(PLACES))]
+        )
 
     cache = {}
 
@@ -107,12 +120,20 @@ def main():
 
     guess = np.concatenate([start, [4e-6, 0.0], np.zeros(len(PLACES) - 1)])
     begin = time.perf_counter()
-    answer, residuals, scale = plain_scipy.solve(rows.z, rows.sigma, rows.station, rows.start_s, rows.stop_s, cached, span, guess)
+    answer, residuals, scale = plain_scipy.solve(
+        rows.z, rows.sigma, rows.station, rows.start_s, rows.stop_s, cached, span, guess
+    )
     plain = time.perf_counter() - begin
-    print(f"plain scipy: {plain:.2f} s, {answer.nfev} evaluations + Jacobians, error {np.linalg.norm((answer.x * scale)[:3] - truth[:3]):.0f} m")
+    print(
+        f"plain scipy: {plain:.2f} s, {answer.nfev} evaluations + Jacobians, "
+        f"error {np.linalg.norm((answer.x * scale)[:3] - truth[:3]):.0f} m"
+    )
     print(f"warm fix is {plain / warm:.0f} times faster than plain scipy")
     single = best(lambda: residuals(answer.x), 5)
-    print(f"plain model without partials: {single * 1e3:.1f} ms; with finite differences of {guess.size} columns {single * (guess.size + 1) * 1e3:.0f} ms")
+    print(
+        f"plain model without partials: {single * 1e3:.1f} ms; "
+        f"with finite differences of {guess.size} columns {single * (guess.size + 1) * 1e3:.0f} ms"
+    )
 
     full = OrbitMotion(epoch, span, frame)
     begin = time.perf_counter()

@@ -2,12 +2,20 @@
 
 from __future__ import annotations
 
-
 import numpy as np
 import worldline
 from campaigns import make_earth
 
-from shiftfix.api import ForwardModel, SampledPath, clock_history, ground_receiver, itrs_from_geodetic, known_log_ratio, observations, smooth_offsets
+from shiftfix.api import (
+    ForwardModel,
+    SampledPath,
+    clock_history,
+    ground_receiver,
+    itrs_from_geodetic,
+    known_log_ratio,
+    observations,
+    smooth_offsets,
+)
 
 
 def orbiting_look(offset, seed):
@@ -18,8 +26,12 @@ def orbiting_look(offset, seed):
     t = np.arange(-150.0, 150.0, 1.0)
     clean = worldline.log_received(satellite, ground, t - 0.5, t + 0.5) + np.log1p(offset)
     rows, _ = observations(
-        station=np.zeros(t.size, int), middle_s=t, interval_s=np.ones(t.size), received_hz=np.full(t.size, 437e6),
-        sigma_hz=np.full(t.size, 1.0), reference_hz=437e6,
+        station=np.zeros(t.size, int),
+        middle_s=t,
+        interval_s=np.ones(t.size),
+        received_hz=np.full(t.size, 437e6),
+        sigma_hz=np.full(t.size, 1.0),
+        reference_hz=437e6,
     )
     nodes = np.arange(-600.0, 601.0, 30.0)
     state = satellite.state(nodes)
@@ -102,7 +114,9 @@ def test_zenith_delay_is_found_from_the_emitters_themselves():
         mapping = 1 / np.sin(elevation)
         phase = 0.12 * mapping / 299792458.0 + sigma * random.standard_normal(241)
         for k in range(240):
-            rows.append((epochs[k], epochs[k + 1], (phase[k + 1] - phase[k]) / 30.0, emitter, mapping[k], mapping[k + 1]))
+            rows.append(
+                (epochs[k], epochs[k + 1], (phase[k + 1] - phase[k]) / 30.0, emitter, mapping[k], mapping[k + 1])
+            )
     start, stop, rate, record, a, b = map(np.array, zip(*rows, strict=True))
     history = clock_history(start, stop, rate, np.full(start.size, sigma), record, a, b)
     assert np.abs(history.zenith_m - 0.12).max() < 0.01

@@ -10,7 +10,17 @@ import worldline
 from campaigns import beacon_from_orbit, leo_pass, make_earth, run, vessel_with_turn
 from scipy.stats import chi2
 
-from shiftfix.api import AnswerSettings, ClockModels, Considered, FitSettings, ForwardModel, Gates, Media, fit_arc, solve_arc
+from shiftfix.api import (
+    AnswerSettings,
+    ClockModels,
+    Considered,
+    FitSettings,
+    ForwardModel,
+    Gates,
+    Media,
+    fit_arc,
+    solve_arc,
+)
 
 
 @pytest.fixture(scope="module")
@@ -20,7 +30,9 @@ def scene():
 
 def fitted(scene, rows, clocks=None, gates=None, receivers=None, media=None):
     settings = FitSettings(clocks=clocks or scene.clocks, gates=gates or Gates(), media=media or Media())
-    return fit_arc(rows, receivers or scene.receivers, scene.bound.motion, scene.truth + [900, -700, 500, 1, -2, 1.5], settings)
+    return fit_arc(
+        rows, receivers or scene.receivers, scene.bound.motion, scene.truth + [900, -700, 500, 1, -2, 1.5], settings
+    )
 
 
 def test_partials_of_every_row_against_differences(scene):
@@ -109,8 +121,12 @@ def test_long_counts_are_averaged_exactly():
         middle.append(t)
     station, middle = np.concatenate(station), np.concatenate(middle)
     rows, order = observations(
-        station=station, middle_s=middle, interval_s=np.full(middle.size, 60.0), received_hz=np.full(middle.size, 437e6),
-        sigma_hz=np.full(middle.size, 1.0 / np.sqrt(60)), reference_hz=437e6,
+        station=station,
+        middle_s=middle,
+        interval_s=np.full(middle.size, 60.0),
+        received_hz=np.full(middle.size, 437e6),
+        sigma_hz=np.full(middle.size, 1.0 / np.sqrt(60)),
+        reference_hz=437e6,
     )
     rows = replace(rows, z=np.concatenate(clean)[order])
     fit = fitted(scene, rows)
@@ -118,13 +134,19 @@ def test_long_counts_are_averaged_exactly():
     assert np.all(np.abs(fit.parameters - scene.truth) < 0.05 * sigma)
     # The value at mid-count is wrong by f'' T**2 / 24: tens of hertz here.
     points = replace(rows, start_s=rows.middle_s, stop_s=rows.middle_s)
-    assert np.abs(ForwardModel(points, scene.receivers).predict(scene.bound.motion.at(scene.truth)) - rows.z).max() * 437e6 > 20.0
+    assert (
+        np.abs(ForwardModel(points, scene.receivers).predict(scene.bound.motion.at(scene.truth)) - rows.z).max() * 437e6
+        > 20.0
+    )
 
 
 def test_common_time_error_that_no_residual_shows(scene):
     """10 ms at all stations move the fix by about 77 m (three wide stations, 437 MHz; computed for the same kind of pass)."""
     rows, bound = scene.draw(8)
-    settings = AnswerSettings(fit=FitSettings(clocks=scene.clocks), considered=Considered(common_time_s=0.010, station_time=False, coordinates=False))
+    settings = AnswerSettings(
+        fit=FitSettings(clocks=scene.clocks),
+        considered=Considered(common_time_s=0.010, station_time=False, coordinates=False),
+    )
     answer = solve_arc(rows, scene.receivers, bound, scene.truth[None], settings)
     assert answer.budget["time tags"]["position_m"] == pytest.approx(77.0, abs=3.0)
     total = sum(v["position_m"] ** 2 for k, v in answer.budget.items() if k != "total")
@@ -135,14 +157,18 @@ def test_wrong_coordinates_move_the_fix_as_considered(scene):
     """100 m of one station's coordinates: what the covariance says is what the fix does."""
     receivers = tuple(replace(r, position_sigma_m=100.0 if r.station_id == "B" else 0.0) for r in scene.receivers)
     rows = replace(scene.rows, z=scene.clean)
-    settings = AnswerSettings(fit=FitSettings(clocks=scene.clocks, gates=Gates(keep_all=True)), considered=Considered(station_time=False))
+    settings = AnswerSettings(
+        fit=FitSettings(clocks=scene.clocks, gates=Gates(keep_all=True)), considered=Considered(station_time=False)
+    )
     answer = solve_arc(rows, receivers, scene.bound, scene.truth[None], settings)
     shifts = []
     for axis in range(3):
         delta = np.zeros(3)
         delta[axis] = 100.0
         moved = [replace(r, path=r.shifted(delta)) if r.station_id == "B" else r for r in receivers]
-        fit = fit_arc(rows, moved, scene.bound.motion, scene.truth, FitSettings(clocks=scene.clocks, gates=Gates(keep_all=True)))
+        fit = fit_arc(
+            rows, moved, scene.bound.motion, scene.truth, FitSettings(clocks=scene.clocks, gates=Gates(keep_all=True))
+        )
         shifts.append(fit.parameters[:3] - scene.truth[:3])
     assert answer.budget["coordinates"]["position_m"] == pytest.approx(np.linalg.norm(shifts), rel=0.02)
 
@@ -158,7 +184,13 @@ def test_row_order_and_station_order_do_not_matter(scene):
 
 def test_one_station_one_pass_is_refused_with_its_directions(scene):
     rows, bound = scene.draw(1)
-    answer = solve_arc(rows.select(rows.station == 0), scene.receivers, bound, scene.truth[None], AnswerSettings(fit=FitSettings(clocks=scene.clocks)))
+    answer = solve_arc(
+        rows.select(rows.station == 0),
+        scene.receivers,
+        bound,
+        scene.truth[None],
+        AnswerSettings(fit=FitSettings(clocks=scene.clocks)),
+    )
     assert answer.verdict == "not observable"
     assert any("cross-track" in text or "along-track" in text for text in answer.unobservable)
 
@@ -166,8 +198,14 @@ def test_one_station_one_pass_is_refused_with_its_directions(scene):
 def test_emitter_at_rest_is_not_locatable():
     scene = vessel_with_turn()
     random = np.random.default_rng(2)
-    flat = replace(scene.rows, z=np.log1p(1e-9 * np.arange(4))[scene.rows.station] + scene.rows.sigma * random.standard_normal(len(scene.rows)))
-    answer = solve_arc(flat, scene.receivers, scene.bound, scene.truth[None], AnswerSettings(fit=FitSettings(clocks=scene.clocks)))
+    flat = replace(
+        scene.rows,
+        z=np.log1p(1e-9 * np.arange(4))[scene.rows.station]
+        + scene.rows.sigma * random.standard_normal(len(scene.rows)),
+    )
+    answer = solve_arc(
+        flat, scene.receivers, scene.bound, scene.truth[None], AnswerSettings(fit=FitSettings(clocks=scene.clocks))
+    )
     assert answer.verdict == "not locatable by this method"
     assert answer.position is None
 
@@ -186,7 +224,13 @@ def test_random_walk_of_the_stations_is_covered():
             mine = rows.station == s
             steps = np.diff(rows.middle_s[mine], prepend=rows.middle_s[mine][0])
             z[mine] += np.cumsum(walk * np.sqrt(np.maximum(steps, 0.0)) * random.standard_normal(mine.sum()))
-        answer = solve_arc(replace(rows, z=z), scene.receivers, bound, scene.truth[None], AnswerSettings(fit=FitSettings(clocks=clocks)))
+        answer = solve_arc(
+            replace(rows, z=z),
+            scene.receivers,
+            bound,
+            scene.truth[None],
+            AnswerSettings(fit=FitSettings(clocks=clocks)),
+        )
         error, covariance = scene.error(answer)
         inside += error @ np.linalg.solve(covariance, error) <= limit
     # 120 seeds: one standard deviation is 2 %; 90.5 to 99.5 % is the 98 % interval around 95 %.
@@ -204,7 +248,13 @@ def test_undeclared_walk_widens_the_error():
         for s in range(3):
             mine = rows.station == s
             z[mine] += np.cumsum(1.5e-9 * random.standard_normal(mine.sum()))
-        answer = solve_arc(replace(rows, z=z), scene.receivers, bound, scene.truth[None], AnswerSettings(fit=FitSettings(clocks=scene.clocks)))
+        answer = solve_arc(
+            replace(rows, z=z),
+            scene.receivers,
+            bound,
+            scene.truth[None],
+            AnswerSettings(fit=FitSettings(clocks=scene.clocks)),
+        )
         error, covariance = scene.error(answer)
         widened += answer.widened.kind == "widened"
         inside += error @ np.linalg.solve(covariance, error) <= chi2.ppf(0.95, 3)

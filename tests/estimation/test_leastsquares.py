@@ -36,15 +36,60 @@ def power(b, x):
 
 
 CASES = {
-    "Misra1a far": (exponential, MISRA_X, MISRA_Y, [500, 0.0001], [238.94212918, 5.5015643181e-4], [2.7070075241, 7.2668688436e-6], 0.12455138894),
-    "Misra1a near": (exponential, MISRA_X, MISRA_Y, [250, 0.0005], [238.94212918, 5.5015643181e-4], [2.7070075241, 7.2668688436e-6], 0.12455138894),
-    "MGH09 near": (
-        rational, MGH_X, MGH_Y, [0.25, 0.39, 0.415, 0.39], [0.19280693458, 0.19128232873, 0.12305650693, 0.13606233068],
-        [0.011435312227, 0.19633220911, 0.080842031232, 0.090025542308], 3.0750560385e-4,
+    "Misra1a far": (
+        exponential,
+        MISRA_X,
+        MISRA_Y,
+        [500, 0.0001],
+        [238.94212918, 5.5015643181e-4],
+        [2.7070075241, 7.2668688436e-6],
+        0.12455138894,
     ),
-    "BoxBOD near": (exponential, BOX_X, BOX_Y, [100, 0.75], [213.80940889, 0.54723748542], [12.354515176, 0.10455993237], 1168.0088766),
-    "DanWood far": (power, DAN_X, DAN_Y, [1, 5], [0.76886226176, 3.8604055871], [0.018281973860, 0.051726610913], 4.3173084083e-3),
-    "DanWood near": (power, DAN_X, DAN_Y, [0.7, 4], [0.76886226176, 3.8604055871], [0.018281973860, 0.051726610913], 4.3173084083e-3),
+    "Misra1a near": (
+        exponential,
+        MISRA_X,
+        MISRA_Y,
+        [250, 0.0005],
+        [238.94212918, 5.5015643181e-4],
+        [2.7070075241, 7.2668688436e-6],
+        0.12455138894,
+    ),
+    "MGH09 near": (
+        rational,
+        MGH_X,
+        MGH_Y,
+        [0.25, 0.39, 0.415, 0.39],
+        [0.19280693458, 0.19128232873, 0.12305650693, 0.13606233068],
+        [0.011435312227, 0.19633220911, 0.080842031232, 0.090025542308],
+        3.0750560385e-4,
+    ),
+    "BoxBOD near": (
+        exponential,
+        BOX_X,
+        BOX_Y,
+        [100, 0.75],
+        [213.80940889, 0.54723748542],
+        [12.354515176, 0.10455993237],
+        1168.0088766,
+    ),
+    "DanWood far": (
+        power,
+        DAN_X,
+        DAN_Y,
+        [1, 5],
+        [0.76886226176, 3.8604055871],
+        [0.018281973860, 0.051726610913],
+        4.3173084083e-3,
+    ),
+    "DanWood near": (
+        power,
+        DAN_X,
+        DAN_Y,
+        [0.7, 4],
+        [0.76886226176, 3.8604055871],
+        [0.018281973860, 0.051726610913],
+        4.3173084083e-3,
+    ),
 }
 
 
@@ -57,7 +102,11 @@ def digits(found, certified):
 def test_certified_values(case):
     model, x, y, start, values, errors, residual_sum = CASES[case]
     minimum = minimise(
-        lambda b: model(b, x)[0] - y, lambda b: model(b, x)[1], np.array(start, float), max_iterations=500, tolerance=1e-22
+        lambda b: model(b, x)[0] - y,
+        lambda b: model(b, x)[1],
+        np.array(start, float),
+        max_iterations=500,
+        tolerance=1e-22,
     )
     assert digits(minimum.parameters, values) > 7.0
     assert digits([minimum.cost], [residual_sum]) > 9.0

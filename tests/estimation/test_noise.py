@@ -25,8 +25,13 @@ def rows_of(n=40, breaks=(13, 27)):
     for b in breaks:
         record[b:] += 1
     return observations(
-        station=np.zeros(n, int), middle_s=30.0 * np.arange(n), interval_s=np.full(n, 30.0), received_hz=np.full(n, 1.5e9),
-        sigma_hz=np.full(n, 0.002), reference_hz=1.5e9, phase_arc=record.astype(str),
+        station=np.zeros(n, int),
+        middle_s=30.0 * np.arange(n),
+        interval_s=np.full(n, 30.0),
+        received_hz=np.full(n, 1.5e9),
+        sigma_hz=np.full(n, 0.002),
+        reference_hz=1.5e9,
+        phase_arc=record.astype(str),
     )[0]
 
 
@@ -68,7 +73,10 @@ def test_rejected_row_leaves_the_others_as_if_it_were_not_there():
 
 
 def test_portmanteau_is_uniform_for_white_noise_and_small_for_drift():
-    p = [portmanteau(np.random.default_rng(s).standard_normal(300), np.zeros(300, int), np.arange(300.0))[1] for s in range(200)]
+    p = [
+        portmanteau(np.random.default_rng(s).standard_normal(300), np.zeros(300, int), np.arange(300.0))[1]
+        for s in range(200)
+    ]
     assert kstest(p, "uniform").pvalue > 1e-3
     drifting = np.random.default_rng(0).standard_normal(300) + np.linspace(-1, 1, 300)
     assert portmanteau(drifting, np.zeros(300, int), np.arange(300.0))[1] < 1e-6

@@ -37,7 +37,12 @@ def orbit_scene(seed):
     random = np.random.default_rng(seed)
     earth, frame, epoch = make_earth(1300.0)
     satellite = worldline.over(
-        earth, -41.2 + random.uniform(-4, 4), -26.4 + random.uniform(-5, 5), random.uniform(350e3, 1.5e6), random.uniform(0, 360), span=900.0
+        earth,
+        -41.2 + random.uniform(-4, 4),
+        -26.4 + random.uniform(-5, 5),
+        random.uniform(350e3, 1.5e6),
+        random.uniform(0, 360),
+        span=900.0,
     )
     count = int(random.integers(2, 5))
     receivers, z, station, middle = [], [], [], []
@@ -49,11 +54,19 @@ def orbit_scene(seed):
         z.append(worldline.log_received(satellite, ground, t - 0.5, t + 0.5))
         station.append(np.full(t.size, k))
         middle.append(t)
-        receivers.append(ground_receiver(f"S{k}", frame, itrs_from_geodetic(np.radians(latitude), np.radians(longitude), 40.0), offset_sigma=1e-8))
+        receivers.append(
+            ground_receiver(
+                f"S{k}", frame, itrs_from_geodetic(np.radians(latitude), np.radians(longitude), 40.0), offset_sigma=1e-8
+            )
+        )
     station, middle, z = map(np.concatenate, (station, middle, z))
     rows, order = observations(
-        station=station, middle_s=middle, interval_s=np.ones(middle.size), received_hz=np.full(middle.size, 437e6),
-        sigma_hz=np.ones(middle.size), reference_hz=437e6,
+        station=station,
+        middle_s=middle,
+        interval_s=np.ones(middle.size),
+        received_hz=np.full(middle.size, 437e6),
+        sigma_hz=np.ones(middle.size),
+        reference_hz=437e6,
     )
     rows = replace(rows, z=z[order] + 4e-6 + rows.sigma * random.standard_normal(middle.size))
     return rows, tuple(receivers), satellite, frame, epoch
@@ -72,7 +85,8 @@ def found(seed):
     truth = satellite.state(np.zeros(1))[0]
     fits = ([answer.widened.fit] if answer.widened else []) + list(answer.others)
     return any(
-        np.all(np.abs(f.parameters - truth) < 5 * np.sqrt(np.diag(f.covariance)[:6]) + 1e-4 * np.abs(truth)) for f in fits
+        np.all(np.abs(f.parameters - truth) < 5 * np.sqrt(np.diag(f.covariance)[:6]) + 1e-4 * np.abs(truth))
+        for f in fits
     )
 
 
@@ -87,7 +101,9 @@ def test_mirror_across_the_track_is_listed_and_decides_the_verdict():
     orbiter = worldline.over(earth, -41.2, -25.3, 850e3, -8.0, span=900.0)
     nodes = np.arange(-800.0, 801.0, 30.0)
     state = orbiter.state(nodes)
-    receivers = (Receiver("PETREL-A", SampledPath(nodes, state[:, :3], state[:, 3:], None), moving=True, offset_sigma=1e-10),)
+    receivers = (
+        Receiver("PETREL-A", SampledPath(nodes, state[:, :3], state[:, 3:], None), moving=True, offset_sigma=1e-10),
+    )
     motion = FixedMotion(frame)
     priors = (ValuePrior(2, 0.0, 300.0),)
     bound = BoundMotion("fixed", motion, None, motion.states_batch, "ITRS", frame, priors)
@@ -97,8 +113,12 @@ def test_mirror_across_the_track_is_listed_and_decides_the_verdict():
         t = np.arange(-half, half + 1, 10.0)
         clean = worldline.log_received(beacon, orbiter, t - 0.2, t + 0.2)
         rows, _ = observations(
-            station=np.zeros(t.size, int), middle_s=t, interval_s=np.full(t.size, 0.4), received_hz=np.full(t.size, 401.648e6),
-            sigma_hz=np.full(t.size, 2.0), reference_hz=401.648e6,
+            station=np.zeros(t.size, int),
+            middle_s=t,
+            interval_s=np.full(t.size, 0.4),
+            received_hz=np.full(t.size, 401.648e6),
+            sigma_hz=np.full(t.size, 2.0),
+            reference_hz=401.648e6,
         )
         rows = replace(rows, z=clean + rows.sigma * np.random.default_rng(0).standard_normal(t.size))
         data = search_data(rows, receivers, clocks)

@@ -92,7 +92,13 @@ class Campaign:
         if self.height is not None:
             index, value, sigma = self.height
             priors += (HeightPrior(value, sigma) if index is None else ValuePrior(index, value, sigma),)
-        fit = fit_arc(rows, self.receivers, bound.motion, self.truth, FitSettings(clocks=self.clocks, priors=priors, gates=Gates(keep_all=True)))
+        fit = fit_arc(
+            rows,
+            self.receivers,
+            bound.motion,
+            self.truth,
+            FitSettings(clocks=self.clocks, priors=priors, gates=Gates(keep_all=True)),
+        )
         _, _, jacobian = bound.state(fit.path)
         p = self.truth.size
         covariance = (jacobian @ fit.covariance[:p, :p] @ jacobian.T)[:3, :3]
@@ -121,7 +127,9 @@ def run(campaign: Campaign, seeds) -> Outcome:
     limit = chi2.ppf(0.95, campaign.plane)
     for seed in seeds:
         rows, bound = campaign.draw(seed)
-        start = campaign.truth + 0.02 * bound.motion.scales * np.random.default_rng(seed + 10**6).standard_normal(campaign.truth.size)
+        start = campaign.truth + 0.02 * bound.motion.scales * np.random.default_rng(seed + 10**6).standard_normal(
+            campaign.truth.size
+        )
         answer = solve_arc(rows, campaign.receivers, bound, start[None], campaign.settings(bound))
         verdicts[answer.verdict] = verdicts.get(answer.verdict, 0) + 1
         if answer.position is None:
@@ -131,14 +139,21 @@ def run(campaign: Campaign, seeds) -> Outcome:
         normalised.append(error @ np.linalg.solve(covariance, error))
     normalised = np.array(normalised)
     return Outcome(
-        float(np.sqrt(np.mean(squares)) / campaign.bound_m()), float((normalised <= limit).mean()), float(normalised.mean()), verdicts
+        float(np.sqrt(np.mean(squares)) / campaign.bound_m()),
+        float((normalised <= limit).mean()),
+        float(normalised.mean()),
+        verdicts,
     )
 
 
 def _rows(clean, station, middle, count, sigma_hz, carrier):
     rows, order = observations(
-        station=station, middle_s=middle, interval_s=np.full(middle.size, count), received_hz=np.full(middle.size, carrier),
-        sigma_hz=np.full(middle.size, sigma_hz), reference_hz=carrier,
+        station=station,
+        middle_s=middle,
+        interval_s=np.full(middle.size, count),
+        received_hz=np.full(middle.size, carrier),
+        sigma_hz=np.full(middle.size, sigma_hz),
+        reference_hz=carrier,
     )
     return rows, clean[order]
 
@@ -156,19 +171,28 @@ def leo_pass() -> Campaign:
         clean.append(worldline.log_received(satellite, ground, t - 0.5, t + 0.5))
         station.append(np.full(t.size, k))
         middle.append(t)
-        receivers.append(ground_receiver(name, frame, itrs_from_geodetic(np.radians(latitude), np.radians(longitude), 50.0), offset_sigma=1e-9))
+        receivers.append(
+            ground_receiver(
+                name, frame, itrs_from_geodetic(np.radians(latitude), np.radians(longitude), 50.0), offset_sigma=1e-9
+            )
+        )
     rows, clean = _rows(np.concatenate(clean), np.concatenate(station), np.concatenate(middle), 1.0, 1.0, 437e6)
     # The scene has zonal terms only: the solver is told so.
     forces = Forces(degree=0, sun=False, moon=False, relativity=False, radiation=False, drag=False)
     motion = OrbitMotion(epoch, (-320.0, 320.0), frame, forces)
     bound = BoundMotion("orbit", motion, None, motion.propagate_batch, "GCRS", frame)
-    return Campaign("leo pass", bound, satellite.state(np.zeros(1))[0], tuple(receivers), rows, clean, ClockModels(), 1e-9, None, 3)
+    return Campaign(
+        "leo pass", bound, satellite.state(np.zeros(1))[0], tuple(receivers), rows, clean, ClockModels(), 1e-9, None, 3
+    )
 
 
 def vessel_with_turn() -> Campaign:
     """Vessel of 12 m/s with a turn of 50 degrees, four fixed stations, 158.3 MHz, 0.5 Hz, references 1e-9."""
     earth, frame, _ = make_earth(2000.0)
-    legs = [(-1e9, 12 * np.sin(np.radians(20)), 12 * np.cos(np.radians(20))), (103.0, 12 * np.sin(np.radians(70)), 12 * np.cos(np.radians(70)))]
+    legs = [
+        (-1e9, 12 * np.sin(np.radians(20)), 12 * np.cos(np.radians(20))),
+        (103.0, 12 * np.sin(np.radians(70)), 12 * np.cos(np.radians(70))),
+    ]
     vessel = worldline.Vessel(earth, -40.66, -25.31, 0.0, legs, 1300.0)
     places = [("A", -40.58, -25.22), ("B", -40.86, -24.79), ("C", -40.31, -24.86), ("D", -40.95, -25.49)]
     receivers, clean, station, middle = [], [], [], []
@@ -178,10 +202,16 @@ def vessel_with_turn() -> Campaign:
         clean.append(worldline.log_received(vessel, ground, t - 5, t + 5))
         station.append(np.full(t.size, k))
         middle.append(t)
-        receivers.append(ground_receiver(name, frame, itrs_from_geodetic(np.radians(latitude), np.radians(longitude), 30.0), offset_sigma=1e-9))
+        receivers.append(
+            ground_receiver(
+                name, frame, itrs_from_geodetic(np.radians(latitude), np.radians(longitude), 30.0), offset_sigma=1e-9
+            )
+        )
     rows, clean = _rows(np.concatenate(clean), np.concatenate(station), np.concatenate(middle), 10.0, 0.5, 158.3e6)
     motion = SurfaceMotion(frame, legs=2)
-    truth = np.array([np.radians(-40.66), np.radians(-25.31), 0.0, legs[0][1], legs[0][2], legs[1][1], legs[1][2], 103.0])
+    truth = np.array(
+        [np.radians(-40.66), np.radians(-25.31), 0.0, legs[0][1], legs[0][2], legs[1][1], legs[1][2], 103.0]
+    )
     names = motion.parameter_names
     assert names[3:] == ("east_1_m_s", "north_1_m_s", "east_2_m_s", "north_2_m_s", "turn_2_s")
     bound = BoundMotion("surface", motion, None, motion.states_batch, "ITRS", frame)
@@ -218,12 +248,23 @@ def aircraft() -> Campaign:
         clean.append(worldline.log_received(plane, ground, t - 1, t + 1))
         station.append(np.full(t.size, k))
         middle.append(t)
-        receivers.append(ground_receiver(f"S{k}", frame, itrs_from_geodetic(np.radians(latitude), np.radians(longitude), 30.0), offset_sigma=1e-9))
+        receivers.append(
+            ground_receiver(
+                f"S{k}", frame, itrs_from_geodetic(np.radians(latitude), np.radians(longitude), 30.0), offset_sigma=1e-9
+            )
+        )
     rows, clean = _rows(np.concatenate(clean), np.concatenate(station), np.concatenate(middle), 2.0, 0.5, 130e6)
     motion = PolynomialMotion(frame, degree=1)
     truth = np.concatenate([plane.itrs(np.zeros(1))[0], plane.v])
     bound = BoundMotion("polynomial", motion, None, motion.states_batch, "ITRS", frame)
-    return Campaign("aircraft", bound, truth, tuple(receivers), rows, clean, ClockModels(), 1e-9, (None, 11000.0, 200.0), 3)
+    return Campaign(
+        "aircraft", bound, truth, tuple(receivers), rows, clean, ClockModels(), 1e-9, (None, 11000.0, 200.0), 3
+    )
 
 
-SCENES = {"leo pass": leo_pass, "vessel with a turn": vessel_with_turn, "beacon from orbit": beacon_from_orbit, "aircraft": aircraft}
+SCENES = {
+    "leo pass": leo_pass,
+    "vessel with a turn": vessel_with_turn,
+    "beacon from orbit": beacon_from_orbit,
+    "aircraft": aircraft,
+}

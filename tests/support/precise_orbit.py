@@ -18,4 +18,8 @@ def against(solution, ephemeris, satellite):
     scale = np.sqrt(np.diag(solution.covariance))
     normalised = error / scale
     correlation = solution.covariance / np.outer(scale, scale)
-    return float(np.linalg.norm(position)), float(np.linalg.norm(velocity)), float(normalised @ np.linalg.solve(correlation, normalised))
+    return (
+        float(np.linalg.norm(position)),
+        float(np.linalg.norm(velocity)),
+        float(normalised @ np.linalg.solve(correlation, normalised)),
+    )

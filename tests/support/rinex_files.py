@@ -45,7 +45,7 @@ class Scene:
         rho = self.range_m(satellite, t)
         delay = self.iono_m_s * t + 2.0
         scale = (F1 / F2) ** 2
-        rate = (self.range_m(satellite, t + 0.5) - self.range_m(satellite, t - 0.5))
+        rate = self.range_m(satellite, t + 0.5) - self.range_m(satellite, t - 0.5)
         out = {
             "L1": (rho - delay) * F1 / C + 1000.0 * n,
             "L2": (rho - scale * delay) * F2 / C - 500.0 * n,

@@ -34,7 +34,9 @@ def _iers():
 class Earth:
     """Earth rotation around one epoch; times are seconds of TAI past it."""
 
-    def __init__(self, year: int, month: int, day: int, seconds_utc: float, tai_minus_utc: int, span_s: float = 7200.0) -> None:
+    def __init__(
+        self, year: int, month: int, day: int, seconds_utc: float, tai_minus_utc: int, span_s: float = 7200.0
+    ) -> None:
         day1, day2 = erfa.cal2jd(year, month, day)
         self.tai = (day1 + day2, (seconds_utc + tai_minus_utc) / 86400.0)
         utc = (day1 + day2, seconds_utc / 86400.0)
@@ -103,7 +105,16 @@ class Vessel(Ground):
             for stop in stops:
                 middle = 0.5 * (t + stop)
                 leg = [q for q in legs if q[0] <= middle][-1] if any(q[0] <= middle for q in legs) else legs[0]
-                run = solve_ivp(rates, (t, stop), y, args=(leg[1], leg[2]), rtol=1e-12, atol=1e-15, dense_output=True, method="DOP853")
+                run = solve_ivp(
+                    rates,
+                    (t, stop),
+                    y,
+                    args=(leg[1], leg[2]),
+                    rtol=1e-12,
+                    atol=1e-15,
+                    dense_output=True,
+                    method="DOP853",
+                )
                 self.parts.append((min(t, stop), max(t, stop), run.sol))
                 t, y = stop, run.y[:, -1]
 
@@ -124,7 +135,13 @@ class Straight(Ground):
     def __init__(self, earth, latitude, longitude, height, east, north, up=0.0):
         super().__init__(earth, latitude, longitude, height)
         f, g = np.radians(latitude), np.radians(longitude)
-        axes = np.array([[-np.sin(g), np.cos(g), 0], [-np.sin(f) * np.cos(g), -np.sin(f) * np.sin(g), np.cos(f)], [np.cos(f) * np.cos(g), np.cos(f) * np.sin(g), np.sin(f)]])
+        axes = np.array(
+            [
+                [-np.sin(g), np.cos(g), 0],
+                [-np.sin(f) * np.cos(g), -np.sin(f) * np.sin(g), np.cos(f)],
+                [np.cos(f) * np.cos(g), np.cos(f) * np.sin(g), np.sin(f)],
+            ]
+        )
         self.v = np.array([east, north, up]) @ axes
 
     def itrs(self, t):

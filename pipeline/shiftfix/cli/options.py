@@ -10,11 +10,18 @@ file_argument = click.argument("file", type=click.Path())
 json_option = click.option("--json", "as_json", is_flag=True, help="Print the result as JSON.")
 debug_option = click.option("--debug", is_flag=True, help="Show the traceback of a failure.")
 allow_option = click.option(
-    "--allow", multiple=True, metavar="FOLDER", type=click.Path(exists=True, file_okay=False),
+    "--allow",
+    multiple=True,
+    metavar="FOLDER",
+    type=click.Path(exists=True, file_okay=False),
     help="Allow files of this folder too; repeatable.",
 )
 set_option = click.option(
-    "--set", "overrides", multiple=True, metavar="PATH=VALUE", help="Override a value, as in nodes.fix.params.loss=plain; repeatable."
+    "--set",
+    "overrides",
+    multiple=True,
+    metavar="PATH=VALUE",
+    help="Override a value, as in nodes.fix.params.loss=plain; repeatable.",
 )
 
 

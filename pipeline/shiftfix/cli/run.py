@@ -13,8 +13,14 @@ from shiftfix.cli.options import pipeline_options
 @click.option("--seed", type=click.IntRange(0), help="Seed in place of that of the file.")
 @click.option("--quiet", is_flag=True, help="No progress, no warnings on stderr.")
 def command(
-    file: str, allow: tuple[str, ...], overrides: tuple[str, ...], as_json: bool, debug: bool, out: str | None,
-    seed: int | None, quiet: bool,
+    file: str,
+    allow: tuple[str, ...],
+    overrides: tuple[str, ...],
+    as_json: bool,
+    debug: bool,
+    out: str | None,
+    seed: int | None,
+    quiet: bool,
 ) -> int:
     """Run the pipeline FILE and write its run folder.
 
@@ -45,7 +51,10 @@ def command(
         click.echo("\n".join([str(result.error), *notes]), err=True)
         click.echo(f"run folder: {folder}", err=True)
         if as_json:
-            click.echo(json_text({"verdict": result.verdict, "exit_code": result.exit_code, "error": str(result.error)}), nl=False)
+            click.echo(
+                json_text({"verdict": result.verdict, "exit_code": result.exit_code, "error": str(result.error)}),
+                nl=False,
+            )
         return result.exit_code
     if as_json:
         click.echo(json_text(result.document or {"verdict": result.verdict, "exit_code": result.exit_code}), nl=False)

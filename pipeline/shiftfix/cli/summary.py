@@ -54,8 +54,10 @@ def summary_lines(document: Mapping[str, Any]) -> list[str]:
         lines += _wrapped("  datum: ", document["frequency_datum"], 2)
     others = document["alternatives"]
     if document["odds"] is not None:
-        text = "no other solution fits" if not others else "; ".join(
-            f"odds {o['odds']:.3f}, {_distance(o['state'], state)} away" for o in others[:3]
+        text = (
+            "no other solution fits"
+            if not others
+            else "; ".join(f"odds {o['odds']:.3f}, {_distance(o['state'], state)} away" for o in others[:3])
         )
         lines += _wrapped("other solutions: ", text, 2)
     ordered = [*document["warnings"], *document["findings"]]

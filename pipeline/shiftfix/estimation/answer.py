@@ -175,11 +175,25 @@ def solve_arc(
     else:
         verdict, text = "fix", "one solution fits"
     return Answer(
-        verdict, text, unseen, widened, others, chances, position, velocity, state_covariance, covariance, budget, findings, kept
+        verdict,
+        text,
+        unseen,
+        widened,
+        others,
+        chances,
+        position,
+        velocity,
+        state_covariance,
+        covariance,
+        budget,
+        findings,
+        kept,
     )
 
 
-def _fits(rows, receivers, bound, starts, settings: AnswerSettings, forward: ForwardModel) -> tuple[list[Fit], list[str]]:
+def _fits(
+    rows, receivers, bound, starts, settings: AnswerSettings, forward: ForwardModel
+) -> tuple[list[Fit], list[str]]:
     fits, failures = [], []
     for start in starts:
         settings.fit.check_cancelled()
@@ -241,7 +255,9 @@ def _by_elevation(rows: Observations, fit: Fit, settings: AnswerSettings) -> tup
     return kept, replace(rows, sigma=rows.sigma * factor)
 
 
-def _refused(verdict: str, text: str, unseen: tuple[str, ...], widened: Widened | None, findings: tuple[str, ...]) -> Answer:
+def _refused(
+    verdict: str, text: str, unseen: tuple[str, ...], widened: Widened | None, findings: tuple[str, ...]
+) -> Answer:
     return Answer(verdict, text, unseen, widened, (), np.empty(0), None, None, None, None, {}, findings)
 
 
@@ -291,7 +307,10 @@ def _with_considered(widened: Widened, bound: BoundMotion, considered: Considere
 
     def sizes(c: np.ndarray) -> dict[str, float]:
         state = jacobian @ c[:p, :p] @ jacobian.T
-        return {"position_m": float(np.sqrt(np.trace(state[:3, :3]))), "velocity_m_s": float(np.sqrt(np.trace(state[3:, 3:])))}
+        return {
+            "position_m": float(np.sqrt(np.trace(state[:3, :3]))),
+            "velocity_m_s": float(np.sqrt(np.trace(state[3:, 3:]))),
+        }
 
     formal = sizes(fit.covariance)
     budget = {"noise, offsets and priors as stated": formal}
@@ -323,5 +342,7 @@ def _findings(fit: Fit, widened: Widened, chances: np.ndarray) -> tuple[str, ...
     if fit.condition > 1e9:
         out.append(f"condition number of the scaled problem {fit.condition:.1e}: weak geometry or a free common offset")
     if len(chances) > 1:
-        out.append(f"{len(chances)} distinct solutions within the listed range; odds of the reported one {chances[0]:.3f}")
+        out.append(
+            f"{len(chances)} distinct solutions within the listed range; odds of the reported one {chances[0]:.3f}"
+        )
     return tuple(out)

@@ -123,8 +123,17 @@ def clock_history(
     kept = _consistent(start_ns, rate, sigma_phase_s * np.sqrt(2.0) / ((stop_ns - start_ns) * 1e-9))
     for attempt in range(4):
         solved = _phase_solution(
-            start_ns, stop_ns, rate, sigma_phase_s, record, mapping_start, mapping_stop, kept, zenith_sigma_m,
-            zenith_step_s, zenith_walk_m,
+            start_ns,
+            stop_ns,
+            rate,
+            sigma_phase_s,
+            record,
+            mapping_start,
+            mapping_stop,
+            kept,
+            zenith_sigma_m,
+            zenith_step_s,
+            zenith_walk_m,
         )
         residual, row_of, history = solved
         size = np.abs(residual)
@@ -195,7 +204,9 @@ def _phase_solution(start_ns, stop_ns, rate, sigma, record, map_a, map_b, kept, 
     lower = np.vstack(prior) if prior else np.zeros((0, count + nodes))
     normal = a.T @ a + lower.T @ lower
     scale = np.sqrt(np.maximum(np.diag(normal), 1e-300))
-    solution = np.linalg.pinv(normal / np.outer(scale, scale), rcond=1e-12, hermitian=True) @ ((a.T @ b) / scale) / scale
+    solution = (
+        np.linalg.pinv(normal / np.outer(scale, scale), rcond=1e-12, hermitian=True) @ ((a.T @ b) / scale) / scale
+    )
     left = value - design @ solution
     phase = np.bincount(index, weight * left, m) / sums
     used = np.bincount(index, minlength=m)

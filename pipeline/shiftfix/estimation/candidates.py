@@ -8,7 +8,28 @@ from shiftfix.estimation.search import SearchData
 from shiftfix.physics import geodesy
 from shiftfix.physics.constants import EARTH_RADIUS_M, GM_EARTH_M3_S2
 
-ALTITUDES_M = np.array([220e3, 320e3, 430e3, 560e3, 720e3, 930e3, 1.2e6, 1.6e6, 2.2e6, 3.2e6, 5e6, 8e6, 12e6, 16e6, 20.2e6, 25e6, 30e6, 36e6])
+ALTITUDES_M = np.array(
+    [
+        220e3,
+        320e3,
+        430e3,
+        560e3,
+        720e3,
+        930e3,
+        1.2e6,
+        1.6e6,
+        2.2e6,
+        3.2e6,
+        5e6,
+        8e6,
+        12e6,
+        16e6,
+        20.2e6,
+        25e6,
+        30e6,
+        36e6,
+    ]
+)
 """Altitudes of the circular orbits [m]: spaced so that a neighbour lies inside the basin of the damped steps."""
 
 
@@ -62,7 +83,11 @@ def circular_orbits(
         cost = np.empty((len(places), headings))
         for h in range(headings):
             position = radius * (np.cos(phase)[:, None] * places[:, None] + np.sin(phase)[:, None] * along[:, None, h])
-            velocity = radius * motion * (np.cos(phase)[:, None] * along[:, None, h] - np.sin(phase)[:, None] * places[:, None])
+            velocity = (
+                radius
+                * motion
+                * (np.cos(phase)[:, None] * along[:, None, h] - np.sin(phase)[:, None] * places[:, None])
+            )
             r = data.residuals(position, velocity)
             cost[:, h] = np.einsum("bn,bn->b", r, r)
         # Two headings a place at most: neighbours in heading fall into one basin.
@@ -101,7 +126,11 @@ def _active(data: SearchData, middle: float) -> tuple[np.ndarray, np.ndarray]:
 def _in_view(data: SearchData, index: np.ndarray, up: np.ndarray, radius: float, points: int) -> np.ndarray:
     """Return places (unit vectors) on a sphere that are above -3 deg of elevation at all given stations."""
     here = np.linalg.norm(data.position[index], axis=1)
-    cap = min(np.pi, np.arccos(np.clip(here.min() / radius, -1.0, 1.0)) + np.radians(4.0)) if radius > here.min() else np.pi
+    cap = (
+        min(np.pi, np.arccos(np.clip(here.min() / radius, -1.0, 1.0)) + np.radians(4.0))
+        if radius > here.min()
+        else np.pi
+    )
     centre = up.sum(0) if np.linalg.norm(up.sum(0)) > 0.1 else up[0]
     for density in (1, 4, 16):
         places = lattice(points * density, cap, centre)

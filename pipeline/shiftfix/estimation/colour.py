@@ -90,7 +90,11 @@ def gather(rows: Observations, used: np.ndarray, blocks: int = 300) -> Blocks:
     label = np.unique(np.column_stack([run, position // size]), axis=0, return_inverse=True)[1].ravel()
     m = label.max() + 1 if len(label) else 0
     matrix = np.zeros((m, len(rows)))
-    weight = np.where(rows.interval_s[order] > 0, rows.interval_s[order], 1.0) if chained_any else 1.0 / rows.sigma[order] ** 2
+    weight = (
+        np.where(rows.interval_s[order] > 0, rows.interval_s[order], 1.0)
+        if chained_any
+        else 1.0 / rows.sigma[order] ** 2
+    )
     matrix[label, order] = weight
     matrix /= matrix.sum(1)[:, None]
     start, stop, station = np.full(m, np.inf), np.full(m, -np.inf), np.zeros(m, np.int64)
@@ -151,7 +155,10 @@ def estimate_colour(
         p = inverse.T @ projected
         pr = inverse.T @ e
         gradient = np.array(
-            [0.5 * s * (np.einsum("ij,ij->", p, c) - pr @ c @ pr) for s, c in zip(np.exp(theta), components, strict=True)]
+            [
+                0.5 * s * (np.einsum("ij,ij->", p, c) - pr @ c @ pr)
+                for s, c in zip(np.exp(theta), components, strict=True)
+            ]
         )
         return float(value), gradient
 
@@ -189,7 +196,9 @@ def _components(blocks: Blocks, white: np.ndarray) -> tuple[list[np.ndarray], tu
     return shapes, tuple(names), None
 
 
-def generalised(colour: Colour, design: np.ndarray, residuals: np.ndarray, prior_rows: np.ndarray, prior_residuals: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
+def generalised(
+    colour: Colour, design: np.ndarray, residuals: np.ndarray, prior_rows: np.ndarray, prior_residuals: np.ndarray
+) -> tuple[np.ndarray, np.ndarray]:
     """Return step and covariance of the generalised least-squares estimate in the blocks.
 
     Parameters

@@ -60,7 +60,8 @@ class Considered:
 def considered_changes(fit: Fit, considered: Considered) -> dict[str, np.ndarray]:
     """Return, by source, the 1-sigma changes of z that considered errors cause: (n, k) columns, independent of each other.
 
-    Sources are `time tags`, `coordinates`, `loading`, `Earth rotation`, `forces`, `emitter antenna`, `troposphere` and `ionosphere`; absent when nothing is considered.
+    Sources are `time tags`, `coordinates`, `loading`, `Earth rotation`, `forces`, `emitter antenna`, `troposphere` and
+    `ionosphere`; absent when nothing is considered.
     """
     forward, rows = fit.forward, fit.forward.rows
     receivers = forward.receivers
@@ -85,7 +86,9 @@ def considered_changes(fit: Fit, considered: Considered) -> dict[str, np.ndarray
         columns = []
         base = forward.predict(fit.path)
         for phase in (0.0, 0.5 * np.pi):
-            moved = [replace(r, path=_Heaving(r.path, considered.loading_m, phase)) if not r.moving else r for r in receivers]
+            moved = [
+                replace(r, path=_Heaving(r.path, considered.loading_m, phase)) if not r.moving else r for r in receivers
+            ]
             change = ForwardModel(rows, moved, forward.media).predict(fit.path) - base
             columns += [change * mine[:, s] for s in range(len(receivers)) if (change * mine[:, s]).any()]
         if columns:
@@ -161,7 +164,8 @@ def _coordinate_slopes(forward: ForwardModel, fit: Fit, step: float = 1.0) -> li
         delta = np.zeros(3)
         delta[axis] = step
         moved = [
-            [replace(r, path=r.shifted(sign * delta)) if r.shifted else r for r in forward.receivers] for sign in (-1, 1)
+            [replace(r, path=r.shifted(sign * delta)) if r.shifted else r for r in forward.receivers]
+            for sign in (-1, 1)
         ]
         low, high = (ForwardModel(forward.rows, m, forward.media).predict(fit.path) for m in moved)
         out.append((high - low) / (2 * step))

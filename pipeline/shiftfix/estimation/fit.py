@@ -253,7 +253,7 @@ def _result(
     rows = memo.forward.rows
     parameters = minimum.parameters
     whiten = whitener(rows.sigma, rows.chained, weights)
-    p, n = parameters.size, len(rows)
+    p, _n = parameters.size, len(rows)
     design = np.column_stack([memo.partials(parameters), linear_model.columns])
     prior_residual, prior_jacobian = prior_rows.stacked(settings.priors, parameters)
     lower = np.zeros((len(linear_model.prior_rows) + len(prior_jacobian), design.shape[1]))

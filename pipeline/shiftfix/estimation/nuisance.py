@@ -89,7 +89,9 @@ class ClockModels:
     rest_log_sigma: float = float("inf")
 
 
-def nuisance(rows: Observations, receivers: Sequence[Receiver], models: ClockModels, emission_lag_s: float = 0.0) -> Nuisance:
+def nuisance(
+    rows: Observations, receivers: Sequence[Receiver], models: ClockModels, emission_lag_s: float = 0.0
+) -> Nuisance:
     """Return the linear parameters of an arc.
 
     Parameters

@@ -157,7 +157,9 @@ def refine(
             normal = np.einsum("bpm,bqm->bpq", j, j)
             right = np.einsum("bpm,bm->bp", j, r)
             diagonal = np.einsum("bpp->bp", normal).copy()
-            normal[:, np.arange(p), np.arange(p)] += damping[:, None] * diagonal + 1e-12 * diagonal.max(1, initial=1e-30)[:, None]
+            normal[:, np.arange(p), np.arange(p)] += (
+                damping[:, None] * diagonal + 1e-12 * diagonal.max(1, initial=1e-30)[:, None]
+            )
             bad = ~np.isfinite(normal).all((1, 2)) | ~np.isfinite(right).all(1)
             normal[bad], right[bad] = np.eye(p), 0.0
             step = np.linalg.solve(normal, right[..., None])[..., 0]

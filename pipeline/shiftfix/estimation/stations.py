@@ -51,8 +51,10 @@ def earth_frame(
     except ValueError as error:
         raise CoverageError(
             Problem(
-                f"Earth orientation ({orientation.name})", "the arc lies outside the table", found=str(error).replace("\n", "; "),
-                allowed="times of the table; observed values end at MJD " f"{orientation.last_observed_mjd:.0f}",
+                f"Earth orientation ({orientation.name})",
+                "the arc lies outside the table",
+                found=str(error).replace("\n", "; "),
+                allowed=f"times of the table; observed values end at MJD {orientation.last_observed_mjd:.0f}",
                 remedy='give a newer table, or earth_orientation = "degraded" for a wider error',
             )
         ) from error
@@ -66,7 +68,9 @@ def earth_frame(
     return frame, notes
 
 
-def station_entries(stations: Any, names: tuple[str, ...], station_ids: np.ndarray, times: np.ndarray, where: Callable[[int], str]) -> dict[str, int]:
+def station_entries(
+    stations: Any, names: tuple[str, ...], station_ids: np.ndarray, times: np.ndarray, where: Callable[[int], str]
+) -> dict[str, int]:
     """Return the row of the station table that is valid for each station over its data.
 
     Parameters
@@ -91,8 +95,10 @@ def station_entries(stations: Any, names: tuple[str, ...], station_ids: np.ndarr
             close = difflib.get_close_matches(name, known, 1)
             problems.append(
                 Problem(
-                    where(int(np.flatnonzero(station_ids == name)[0])), f"station {name!r} is not in the station book",
-                    allowed=", ".join(known), remedy=f"did you mean {close[0]}?" if close else "add it to the station book",
+                    where(int(np.flatnonzero(station_ids == name)[0])),
+                    f"station {name!r} is not in the station book",
+                    allowed=", ".join(known),
+                    remedy=f"did you mean {close[0]}?" if close else "add it to the station book",
                 )
             )
             continue
@@ -102,7 +108,8 @@ def station_entries(stations: Any, names: tuple[str, ...], station_ids: np.ndarr
         if not valid:
             problems.append(
                 Problem(
-                    f"station {name}", "no entry of the station book is valid over the whole arc",
+                    f"station {name}",
+                    "no entry of the station book is valid over the whole arc",
                     found=f"{utc_text(int(mine.min()))} to {utc_text(int(mine.max()))}",
                     remedy="split the arc where the station changed, or extend valid_from / valid_until",
                 )
@@ -134,7 +141,9 @@ def station_receiver(stations: Any, row: int, frame: EarthFrame, epoch_tai_ns: i
         position_sigma_m=value("position_sigma_m"),
     )
     if name in stations.ephemerides:
-        return Receiver(name, sampled_path(stations.ephemerides[name], name, frame, epoch_tai_ns), moving=True, **priors)
+        return Receiver(
+            name, sampled_path(stations.ephemerides[name], name, frame, epoch_tai_ns), moving=True, **priors
+        )
     position = np.array([value("x_m"), value("y_m"), value("z_m")])
     velocity = np.array([value("vx_m_s"), value("vy_m_s"), value("vz_m_s")])
     if velocity.any():

@@ -64,7 +64,9 @@ def widen(fit: Fit, mode: str = "declared", *, level: float = 1e-3, minimum_rows
     too_large = chi2.sf(fit.chi_square, dof) < level
     findings: list[str] = []
     if too_large:
-        findings.append(f"residuals are {np.sqrt(reduced):.2f} times the stated noise (chi-square {fit.chi_square:.0f} for {dof})")
+        findings.append(
+            f"residuals are {np.sqrt(reduced):.2f} times the stated noise (chi-square {fit.chi_square:.0f} for {dof})"
+        )
     if p_white < level:
         findings.append(f"residuals are not white (portmanteau {statistic:.0f}, p {p_white:.1e})")
     if mode == "declared" and not too_large and p_white >= level:
@@ -90,7 +92,10 @@ def widen(fit: Fit, mode: str = "declared", *, level: float = 1e-3, minimum_rows
         return Widened(fit, covariance, "widened", _carrier(colour, design, covariance), tuple(findings), colour)
     covariance = sandwich(colour, design, white, lower)
     # The blocks lose a little of the rows' information; never claim less than the formal error.
-    grow = max(1.0, float(np.median(np.diag(fit.covariance)[: fit.parameters.size] / np.diag(covariance)[: fit.parameters.size])))
+    grow = max(
+        1.0,
+        float(np.median(np.diag(fit.covariance)[: fit.parameters.size] / np.diag(covariance)[: fit.parameters.size])),
+    )
     return Widened(fit, covariance * grow, "widened", fit.carry, tuple(findings), colour)
 
 

@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 import difflib
-import tomllib
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, field
 from pathlib import Path
@@ -11,6 +10,7 @@ from typing import Any
 
 from shiftfix.errors import DefinitionError, PluginError, Problem
 from shiftfix.graph.build import cycle_of, run_order
+from shiftfix.graph.overrides import apply_overrides, plain_values
 from shiftfix.graph.parameters import Folders, Resolved, resolve_parameters
 from shiftfix.graph.registry import RegisteredNode, Registry
 from shiftfix.tables.cautions import EMITTER_CLASSES
@@ -110,47 +110,21 @@ def read_definition(
         document = parse_located_toml(content, path.name)
     except TomlSyntaxError as error:
         raise DefinitionError(error.problem) from error
-    values = _plain(document.values)
-    changed, problems = _override(values, overrides)
-    reader = _Reader(path, document, values, changed, Folders(path.parent, [Path(a) for a in allow]), registry or Registry())
+    values = plain_values(document.values)
+    changed, problems = apply_overrides(values, overrides)
+    reader = _Reader(
+        path, document, values, changed, Folders(path.parent, [Path(a) for a in allow]), registry or Registry()
+    )
     reader.problems += problems
     return reader.read(content, tuple(overrides))
-
-
-def _plain(value: Any) -> Any:
-    if isinstance(value, Mapping):
-        return {k: _plain(v) for k, v in value.items()}
-    return [_plain(v) for v in value] if isinstance(value, list) else value
-
-
-def _override(values: dict, overrides: Sequence[str]) -> tuple[dict[tuple, str], list[Problem]]:
-    changed: dict[tuple, str] = {}
-    problems = []
-    for text in overrides:
-        key, sign, raw = text.partition("=")
-        parts = tuple(p.strip() for p in key.split("."))
-        if not sign or not all(parts):
-            problems.append(Problem(f"--set {text}", "not of the form PATH=VALUE", allowed="nodes.NODE.params.NAME=VALUE"))
-            continue
-        try:
-            value = tomllib.loads(f"v = {raw}")["v"]
-        except tomllib.TOMLDecodeError:
-            value = raw
-        target = values
-        for part in parts[:-1]:
-            target = target.setdefault(part, {}) if isinstance(target, dict) else {}
-        if not isinstance(target, dict) or (parts[0] == "nodes" and (len(parts) < 4 or parts[1] not in values.get("nodes", {}))):
-            problems.append(Problem(f"--set {text}", "no such value in the pipeline file", found=key))
-            continue
-        target[parts[-1]] = value
-        changed[parts] = text
-    return changed, problems
 
 
 class _Reader:
     """Walks one document and collects every problem."""
 
-    def __init__(self, path, document: LocatedDocument, values: dict, changed: dict, folders: Folders, registry: Registry) -> None:
+    def __init__(
+        self, path, document: LocatedDocument, values: dict, changed: dict, folders: Folders, registry: Registry
+    ) -> None:
         self.path, self.document, self.values, self.changed = path, document, values, changed
         self.folders, self.registry = folders, registry
         self.problems: list[Problem] = []
@@ -168,7 +142,9 @@ class _Reader:
         values = self.values
         for name in values:
             if name not in _TOP:
-                self.add((name,), "unknown key", key=True, found=name, allowed=", ".join(_TOP), remedy=_closest(name, _TOP))
+                self.add(
+                    (name,), "unknown key", key=True, found=name, allowed=", ".join(_TOP), remedy=_closest(name, _TOP)
+                )
         self._version(values)
         title = values.get("title", "")
         if not isinstance(title, str):
@@ -179,7 +155,9 @@ class _Reader:
         classes = self._classes(values.get("emitter_classes", []))
         nodes = values.get("nodes", {})
         if not isinstance(nodes, dict) or not nodes:
-            self.add(("nodes",) if "nodes" in values else (), "no nodes are defined", allowed="one table [nodes.NAME] a node")
+            self.add(
+                ("nodes",) if "nodes" in values else (), "no nodes are defined", allowed="one table [nodes.NAME] a node"
+            )
             nodes = {}
         described = {name: self._describe(name, body) for name, body in nodes.items()}
         wired = {name: self._wire(name, nodes[name], described) for name in described if described[name]}
@@ -187,12 +165,23 @@ class _Reader:
         cycle = cycle_of(links)
         if cycle:
             name = cycle[0]
-            self.add(("nodes", name, "inputs"), "the nodes feed each other in a circle", found=" -> ".join([*cycle, cycle[0]]))
+            self.add(
+                ("nodes", name, "inputs"),
+                "the nodes feed each other in a circle",
+                found=" -> ".join([*cycle, cycle[0]]),
+            )
         if self.problems:
             order = {(p.where.split(": ")[0]): k for k, p in enumerate(self.problems)}
             raise DefinitionError(sorted(self.problems, key=lambda p: (_line(p.where), order[p.where.split(": ")[0]])))
         defined = {
-            name: DefinedNode(name, described[name][0], described[name][1], described[name][2], wired[name], self.document.place(("nodes", name))[0])
+            name: DefinedNode(
+                name,
+                described[name][0],
+                described[name][1],
+                described[name][2],
+                wired[name],
+                self.document.place(("nodes", name))[0],
+            )
             for name in described
         }
         return Definition(
@@ -201,9 +190,19 @@ class _Reader:
 
     def _version(self, values: dict) -> None:
         if "shiftfix" not in values:
-            self.add((), "the format version is missing", allowed=f"shiftfix = {FORMAT}", remedy=f"begin the file with shiftfix = {FORMAT}")
+            self.add(
+                (),
+                "the format version is missing",
+                allowed=f"shiftfix = {FORMAT}",
+                remedy=f"begin the file with shiftfix = {FORMAT}",
+            )
         elif values["shiftfix"] != FORMAT or isinstance(values["shiftfix"], bool):
-            self.add(("shiftfix",), "unknown version of the pipeline format", found=repr(values["shiftfix"]), allowed=str(FORMAT))
+            self.add(
+                ("shiftfix",),
+                "unknown version of the pipeline format",
+                found=repr(values["shiftfix"]),
+                allowed=str(FORMAT),
+            )
 
     def _classes(self, given: Any) -> tuple[str, ...]:
         if not isinstance(given, list):
@@ -212,7 +211,10 @@ class _Reader:
         for k, name in enumerate(given):
             if name not in EMITTER_CLASSES:
                 self.add(
-                    ("emitter_classes", k), "unknown emitter class", found=repr(name), allowed=", ".join(EMITTER_CLASSES),
+                    ("emitter_classes", k),
+                    "unknown emitter class",
+                    found=repr(name),
+                    allowed=", ".join(EMITTER_CLASSES),
                     remedy=_closest(name, EMITTER_CLASSES),
                 )
         return tuple(str(g) for g in given)
@@ -226,10 +228,22 @@ class _Reader:
             self.add(here, "bad node name", key=True, found=name, allowed="letters, digits and _")
         for key in body:
             if key not in _NODE:
-                self.add((*here, key), "unknown key of a node", key=True, found=key, allowed=", ".join(_NODE), remedy=_closest(key, _NODE))
+                self.add(
+                    (*here, key),
+                    "unknown key of a node",
+                    key=True,
+                    found=key,
+                    allowed=", ".join(_NODE),
+                    remedy=_closest(key, _NODE),
+                )
         use = body.get("use")
         if not isinstance(use, str):
-            self.add((*here, "use") if "use" in body else here, "the node does not say what it uses", found=repr(use) if use is not None else "", allowed='use = "plugin.node"')
+            self.add(
+                (*here, "use") if "use" in body else here,
+                "the node does not say what it uses",
+                found=repr(use) if use is not None else "",
+                allowed='use = "plugin.node"',
+            )
             return None
         registered = self._find(here, use)
         if registered is None:
@@ -252,13 +266,22 @@ class _Reader:
     def _find(self, here: tuple, use: str) -> RegisteredNode | None:
         plugin, dot, _ = use.partition(".")
         if not dot:
-            self.add((*here, "use"), "not a qualified node name", found=use, allowed="plugin.node, as `shiftfix nodes` lists them")
+            self.add(
+                (*here, "use"),
+                "not a qualified node name",
+                found=use,
+                allowed="plugin.node, as `shiftfix nodes` lists them",
+            )
             return None
         if plugin not in self.registry.names():
             names = self.registry.names()
             self.add(
-                (*here, "use"), f"no plugin is called {plugin!r}", found=use, allowed=", ".join(names),
-                remedy=_closest(plugin, names) or "install the distribution that has it; `shiftfix plugins` lists what is there",
+                (*here, "use"),
+                f"no plugin is called {plugin!r}",
+                found=use,
+                allowed=", ".join(names),
+                remedy=_closest(plugin, names)
+                or "install the distribution that has it; `shiftfix plugins` lists what is there",
             )
             return None
         try:
@@ -268,7 +291,10 @@ class _Reader:
             self.add((*here, "use"), "no such node", found=use, allowed=", ".join(known), remedy=_closest(use, known))
         except PluginError as error:
             raise PluginError(
-                [Problem(f"{self.where(*here, 'use')}: {p.where}", p.what, p.found, p.allowed, p.remedy) for p in error.problems]
+                [
+                    Problem(f"{self.where(*here, 'use')}: {p.where}", p.what, p.found, p.allowed, p.remedy)
+                    for p in error.problems
+                ]
             ) from error
         return None
 
@@ -277,16 +303,28 @@ class _Reader:
         here = ("nodes", name, "inputs")
         given = body.get("inputs", {})
         if not isinstance(given, dict):
-            self.add(here, "inputs are a table", found=repr(given), allowed="inputs.PORT = \"NODE\"")
+            self.add(here, "inputs are a table", found=repr(given), allowed='inputs.PORT = "NODE"')
             return {}
         out: dict[str, tuple[Connection, ...]] = {}
         for port in given:
             if port not in spec.inputs:
-                self.add((*here, port), "no such input", key=True, found=port, allowed=", ".join(spec.inputs) or "none: this node has no inputs", remedy=_closest(port, spec.inputs))
+                self.add(
+                    (*here, port),
+                    "no such input",
+                    key=True,
+                    found=port,
+                    allowed=", ".join(spec.inputs) or "none: this node has no inputs",
+                    remedy=_closest(port, spec.inputs),
+                )
         for port, description in spec.inputs.items():
             if port not in given:
                 if not description.optional:
-                    self.add(here if "inputs" in body else here[:2], f"input {port!r} is not connected", allowed=description.table.__name__, remedy=f"add inputs.{port} = \"NODE\" ({description.meaning})")
+                    self.add(
+                        here if "inputs" in body else here[:2],
+                        f"input {port!r} is not connected",
+                        allowed=description.table.__name__,
+                        remedy=f'add inputs.{port} = "NODE" ({description.meaning})',
+                    )
                 continue
             raw = given[port]
             sources = raw if isinstance(raw, list) and description.many else [raw]
@@ -295,32 +333,57 @@ class _Reader:
                 continue
             if not sources:
                 self.add((*here, port), "the list is empty")
-            found = [self._connect((*here, port, k) if isinstance(raw, list) else (*here, port), s, description, described) for k, s in enumerate(sources)]
+            found = [
+                self._connect((*here, port, k) if isinstance(raw, list) else (*here, port), s, description, described)
+                for k, s in enumerate(sources)
+            ]
             out[port] = tuple(c for c in found if c)
         return out
 
     def _connect(self, path: tuple, source: Any, description, described: dict) -> Connection | None:
         if not isinstance(source, str):
-            self.add(path, "a connection is the name of a node", found=repr(source), allowed="\"NODE\" or \"NODE.OUTPUT\"")
+            self.add(path, "a connection is the name of a node", found=repr(source), allowed='"NODE" or "NODE.OUTPUT"')
             return None
         node, dot, output = source.partition(".")
         if node not in described:
-            self.add(path, f"no node is called {node!r}", found=source, allowed=", ".join(described), remedy=_closest(node, described))
+            self.add(
+                path,
+                f"no node is called {node!r}",
+                found=source,
+                allowed=", ".join(described),
+                remedy=_closest(node, described),
+            )
             return None
         if described[node] is None:
             return None
         outputs = described[node][0].spec.outputs
         if not dot:
             if len(outputs) != 1:
-                self.add(path, f"node {node!r} has {len(outputs)} outputs: name one", found=source, allowed=", ".join(f"{node}.{o}" for o in outputs) or "none: it only makes files")
+                self.add(
+                    path,
+                    f"node {node!r} has {len(outputs)} outputs: name one",
+                    found=source,
+                    allowed=", ".join(f"{node}.{o}" for o in outputs) or "none: it only makes files",
+                )
                 return None
             output = next(iter(outputs))
         elif output not in outputs:
-            self.add(path, f"node {node!r} has no output {output!r}", found=source, allowed=", ".join(f"{node}.{o}" for o in outputs), remedy=_closest(output, outputs))
+            self.add(
+                path,
+                f"node {node!r} has no output {output!r}",
+                found=source,
+                allowed=", ".join(f"{node}.{o}" for o in outputs),
+                remedy=_closest(output, outputs),
+            )
             return None
         table = outputs[output].table
         if not issubclass(table, description.table):
-            self.add(path, "the table is of another type", found=f"{table.__name__} from {node}.{output}", allowed=description.table.__name__)
+            self.add(
+                path,
+                "the table is of another type",
+                found=f"{table.__name__} from {node}.{output}",
+                allowed=description.table.__name__,
+            )
             return None
         return Connection(node, output)
 

@@ -92,13 +92,24 @@ def execute(
     for name, node in definition.nodes.items():
         plugin = node.registered.plugin
         out.records[name] = NodeRecord(
-            name, node.registered.qualified_name, f"{plugin.distribution} {plugin.version}", {r.name: r.value for r in node.resolved}
+            name,
+            node.registered.qualified_name,
+            f"{plugin.distribution} {plugin.version}",
+            {r.name: r.value for r in node.resolved},
         )
     emit(Event("run_started", text=definition.title, details={"nodes": list(definition.order)}))
     try:
         for name in definition.order:
             check_cancelled()
-            _run_node(definition, definition.nodes[name], out, emit, check_cancelled, folder, definition.seed if seed is None else seed)
+            _run_node(
+                definition,
+                definition.nodes[name],
+                out,
+                emit,
+                check_cancelled,
+                folder,
+                definition.seed if seed is None else seed,
+            )
     except KeyboardInterrupt:
         out.error = RunCancelled(Problem("run", "interrupted", remedy="the finished nodes stand in the run folder"))
     except ShiftfixError as error:
@@ -110,7 +121,9 @@ def execute(
     return out
 
 
-def _run_node(definition, node: DefinedNode, out: Execution, emit, check_cancelled, folder: Path | None, seed: int) -> None:
+def _run_node(
+    definition, node: DefinedNode, out: Execution, emit, check_cancelled, folder: Path | None, seed: int
+) -> None:
     record = out.records[node.name]
     spec, plugin = node.registered.spec, node.registered.plugin
     where = f"node {node.name} ({node.registered.qualified_name} of {plugin.distribution} {plugin.version})"
@@ -141,12 +154,25 @@ def _run_node(definition, node: DefinedNode, out: Execution, emit, check_cancell
 
     def parameters(cls: type, given: Mapping[str, Any], name: str) -> Any:
         built, _, problems = resolve_parameters(
-            cls, given, node_path=f"nodes.{node.name}", place=lambda path, key: f"params.{name}",
-            origin=lambda p: "", folders=definition.folders,
+            cls,
+            given,
+            node_path=f"nodes.{node.name}",
+            place=lambda path, key: f"params.{name}",
+            origin=lambda p: "",
+            folders=definition.folders,
         )
         if problems:
             raise DefinitionError(
-                [Problem(p.where.replace(".params.", f".params.{name}.").replace(f"params.{name}: ", ""), p.what, p.found, p.allowed, p.remedy) for p in problems]
+                [
+                    Problem(
+                        p.where.replace(".params.", f".params.{name}.").replace(f"params.{name}: ", ""),
+                        p.what,
+                        p.found,
+                        p.allowed,
+                        p.remedy,
+                    )
+                    for p in problems
+                ]
             )
         return built
 
@@ -175,7 +201,9 @@ def _run_node(definition, node: DefinedNode, out: Execution, emit, check_cancell
                 continue
             now = [t.fingerprint() for t in (tables if isinstance(tables, tuple) else (tables,))]
             if now != record.inputs[port]:
-                raise NodeError(Problem(where, f"the node changed its input {port!r} in place", remedy="work on a copy"))
+                raise NodeError(
+                    Problem(where, f"the node changed its input {port!r} in place", remedy="work on a copy")
+                )
     except RunCancelled:
         record.state = "interrupted"
         raise
@@ -193,8 +221,14 @@ def _run_node(definition, node: DefinedNode, out: Execution, emit, check_cancell
         emit(Event("node_failed", node.name, text=f"{type(error).__name__}: {error}"))
         shapes = ", ".join(f"{p}: {len(t)} rows" for p, t in inputs.items() if isinstance(t, Table))
         missing = isinstance(error, ImportError) and getattr(error, "name", None)
-        remedy = f"a library is missing: pip install {error.name}" if missing else f"report this to the authors of {plugin.distribution}"
-        raise NodeError(Problem(where, f"failed with {type(error).__name__}: {error}", found=shapes, remedy=remedy)) from error
+        remedy = (
+            f"a library is missing: pip install {error.name}"
+            if missing
+            else f"report this to the authors of {plugin.distribution}"
+        )
+        raise NodeError(
+            Problem(where, f"failed with {type(error).__name__}: {error}", found=shapes, remedy=remedy)
+        ) from error
     finally:
         record.seconds = time.perf_counter() - begin
     for port, table in outputs.items():
@@ -202,16 +236,30 @@ def _run_node(definition, node: DefinedNode, out: Execution, emit, check_cancell
         record.outputs[port] = table.fingerprint()
         record.rows[port] = len(table)
     record.state = "finished"
-    emit(Event("node_finished", node.name, 1.0, details={"rows": dict(record.rows), "seconds": round(record.seconds, 3)}))
+    emit(
+        Event("node_finished", node.name, 1.0, details={"rows": dict(record.rows), "seconds": round(record.seconds, 3)})
+    )
 
 
 def _check_outputs(where: str, spec, outputs: Any) -> None:
     if not isinstance(outputs, Mapping):
-        raise NodeError(Problem(where, "gave no mapping of outputs", found=type(outputs).__name__, allowed=", ".join(spec.outputs) or "{}"))
+        raise NodeError(
+            Problem(
+                where,
+                "gave no mapping of outputs",
+                found=type(outputs).__name__,
+                allowed=", ".join(spec.outputs) or "{}",
+            )
+        )
     problems = [Problem(where, f"output {name!r} is missing") for name in spec.outputs if name not in outputs]
     problems += [Problem(where, f"output {name!r} is not declared") for name in outputs if name not in spec.outputs]
     problems += [
-        Problem(where, f"output {name!r} is of another type", found=type(outputs[name]).__name__, allowed=port.table.__name__)
+        Problem(
+            where,
+            f"output {name!r} is of another type",
+            found=type(outputs[name]).__name__,
+            allowed=port.table.__name__,
+        )
         for name, port in spec.outputs.items()
         if name in outputs and not isinstance(outputs[name], port.table)
     ]
@@ -228,7 +276,9 @@ def final_verdict(definition: Definition, execution: Execution) -> Table | None:
     last = None
     for name in definition.order:
         for key, table in deciding.items():
-            if key.partition(".")[0] == name and not any(k.partition(".")[0] in consumers(links, name) for k in deciding):
+            if key.partition(".")[0] == name and not any(
+                k.partition(".")[0] in consumers(links, name) for k in deciding
+            ):
                 last = table
     return last
 
@@ -247,5 +297,9 @@ def rejects_of(execution: Execution) -> list[dict[str, Any]]:
     found: dict[tuple, dict[str, Any]] = {}
     for table in execution.tables.values():
         for r in getattr(table, "rejects", ()):
-            found[(r.source, r.row_number, r.reason)] = {"source": r.source, "row_number": r.row_number, "reason": r.reason}
+            found[(r.source, r.row_number, r.reason)] = {
+                "source": r.source,
+                "row_number": r.row_number,
+                "reason": r.reason,
+            }
     return list(found.values())

@@ -1,10 +1,10 @@
 """The three hooks of shiftfix. A plugin is a module in the entry-point group `shiftfix.plugins` that implements some.
 
-    from shiftfix.api import NodeSpec, hookimpl
+from shiftfix.api import NodeSpec, hookimpl
 
-    @hookimpl
-    def shiftfix_nodes():
-        return (NodeSpec(name="my_log", summary="...", function=read_my_log, ...),)
+@hookimpl
+def shiftfix_nodes():
+    return (NodeSpec(name="my_log", summary="...", function=read_my_log, ...),)
 """
 
 from __future__ import annotations

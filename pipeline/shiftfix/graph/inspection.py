@@ -23,7 +23,10 @@ def list_plugins(registry: Registry | None = None) -> tuple[PluginEntry, ...]:
 def list_nodes(registry: Registry | None = None) -> list[dict[str, str]]:
     """Return name, summary and plugin of every node that can be loaded."""
     nodes = (registry or Registry()).nodes()
-    return [{"name": n.qualified_name, "summary": n.spec.summary, "plugin": f"{n.plugin.distribution} {n.plugin.version}"} for n in nodes]
+    return [
+        {"name": n.qualified_name, "summary": n.spec.summary, "plugin": f"{n.plugin.distribution} {n.plugin.version}"}
+        for n in nodes
+    ]
 
 
 def list_motions(registry: Registry | None = None) -> list[dict[str, str]]:
@@ -38,7 +41,9 @@ def describe_node(name: str, registry: Registry | None = None) -> dict[str, Any]
     known = {n.qualified_name: n for n in registry.nodes()}
     if name not in known:
         close = difflib.get_close_matches(name, known, 1)
-        raise DefinitionError(Problem(name, "no such node", allowed=", ".join(known), remedy=f"did you mean {close[0]}?" if close else ""))
+        raise DefinitionError(
+            Problem(name, "no such node", allowed=", ".join(known), remedy=f"did you mean {close[0]}?" if close else "")
+        )
     node = known[name]
     return {
         "name": name,
@@ -52,7 +57,8 @@ def describe_node(name: str, registry: Registry | None = None) -> dict[str, Any]
 
 def _ports(ports: Mapping[str, Port]) -> list[dict[str, Any]]:
     return [
-        {"name": n, "table": p.table.__name__, "meaning": p.meaning, "optional": p.optional, "many": p.many} for n, p in ports.items()
+        {"name": n, "table": p.table.__name__, "meaning": p.meaning, "optional": p.optional, "many": p.many}
+        for n, p in ports.items()
     ]
 
 
@@ -60,12 +66,19 @@ def _params(spec: NodeSpec) -> list[dict[str, Any]]:
     out = []
     for field in dataclasses.fields(spec.params):
         required = field.default is dataclasses.MISSING and field.default_factory is dataclasses.MISSING
-        default = None if required else field.default if field.default is not dataclasses.MISSING else field.default_factory()
+        default = (
+            None if required else field.default if field.default is not dataclasses.MISSING else field.default_factory()
+        )
         meta = field.metadata
         out.append(
             {
-                "name": field.name, "required": required, "default": shown(default), "unit": meta.get("unit", ""),
-                "meaning": meta.get("meaning", ""), "choices": list(meta.get("choices", ())), "minimum": meta.get("minimum"),
+                "name": field.name,
+                "required": required,
+                "default": shown(default),
+                "unit": meta.get("unit", ""),
+                "meaning": meta.get("meaning", ""),
+                "choices": list(meta.get("choices", ())),
+                "minimum": meta.get("minimum"),
                 "maximum": meta.get("maximum"),
             }
         )
@@ -85,12 +98,24 @@ def shown(value: Any) -> Any:
     return value
 
 
-def check_pipeline(file: str | Path, *, allow: Sequence[str | Path] = (), overrides: Sequence[str] = (), registry: Registry | None = None) -> Definition:
+def check_pipeline(
+    file: str | Path,
+    *,
+    allow: Sequence[str | Path] = (),
+    overrides: Sequence[str] = (),
+    registry: Registry | None = None,
+) -> Definition:
     """Return the checked definition of a pipeline file; raises DefinitionError with all its problems."""
     return read_definition(file, allow=allow, overrides=overrides, registry=registry)
 
 
-def explain_pipeline(file: str | Path, *, allow: Sequence[str | Path] = (), overrides: Sequence[str] = (), registry: Registry | None = None) -> dict[str, Any]:
+def explain_pipeline(
+    file: str | Path,
+    *,
+    allow: Sequence[str | Path] = (),
+    overrides: Sequence[str] = (),
+    registry: Registry | None = None,
+) -> dict[str, Any]:
     """Return the resolved plan as plain data: nodes in running order, each value with unit and origin."""
     definition = read_definition(file, allow=allow, overrides=overrides, registry=registry)
     nodes = []
@@ -103,7 +128,9 @@ def explain_pipeline(file: str | Path, *, allow: Sequence[str | Path] = (), over
                 value = definition.folders.display(value)
             elif isinstance(value, tuple) and value and isinstance(value[0], Path):
                 value = [definition.folders.display(v) for v in value]
-            params.append({"name": r.name, "value": shown(value), "unit": r.unit, "origin": r.origin, "meaning": r.meaning})
+            params.append(
+                {"name": r.name, "value": shown(value), "unit": r.unit, "origin": r.origin, "meaning": r.meaning}
+            )
         plugin = node.registered.plugin
         nodes.append(
             {
@@ -116,6 +143,9 @@ def explain_pipeline(file: str | Path, *, allow: Sequence[str | Path] = (), over
             }
         )
     return {
-        "file": definition.path.name, "title": definition.title, "emitter_classes": list(definition.emitter_classes),
-        "seed": definition.seed, "nodes": nodes,
+        "file": definition.path.name,
+        "title": definition.title,
+        "emitter_classes": list(definition.emitter_classes),
+        "seed": definition.seed,
+        "nodes": nodes,
     }

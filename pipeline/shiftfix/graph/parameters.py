@@ -136,13 +136,21 @@ def _allowed(meta: Mapping[str, Any], hint: Any) -> str:
     if meta.get("choices"):
         return ", ".join(meta["choices"])
     if meta.get("path"):
-        return "a path relative to the pipeline file" + (" or a pattern, or a list of them" if meta["path"] == "files" else "")
+        return "a path relative to the pipeline file" + (
+            " or a pattern, or a list of them" if meta["path"] == "files" else ""
+        )
     if meta.get("unit"):
-        text = f"a quantity in {meta['unit']}" if meta["unit"] != "1" else "a number in quotes, with ppm, ppb or % if wanted"
+        text = (
+            f"a quantity in {meta['unit']}"
+            if meta["unit"] != "1"
+            else "a number in quotes, with ppm, ppb or % if wanted"
+        )
         return text + (" with optional +/- 1-sigma" if meta.get("sigma") else "") + _bounds(meta)
     names = {bool: "true or false", int: "a whole number", float: "a number", str: "a text"}
     plain = _plain(hint)
-    return names.get(plain, "a list" if plain in (list, tuple) else "a table" if plain is dict else str(plain)) + _bounds(meta)
+    return names.get(
+        plain, "a list" if plain in (list, tuple) else "a table" if plain is dict else str(plain)
+    ) + _bounds(meta)
 
 
 def _bounds(meta: Mapping[str, Any]) -> str:
@@ -222,7 +230,9 @@ def _bounded(value: float, meta: Mapping[str, Any]) -> Any:
 def _choice(raw: Any, choices: tuple[str, ...], path: tuple) -> str:
     if raw not in choices:
         close = difflib.get_close_matches(str(raw), choices, 1)
-        raise _Bad("not one of the choices", raw, ", ".join(choices), f"did you mean {close[0]}?" if close else "", path)
+        raise _Bad(
+            "not one of the choices", raw, ", ".join(choices), f"did you mean {close[0]}?" if close else "", path
+        )
     return raw
 
 
@@ -247,9 +257,17 @@ def _paths(raw: Any, kind: str, folders: Folders) -> Path | tuple[Path, ...]:
     found: list[Path] = []
     for k, pattern in enumerate(patterns):
         path = () if isinstance(raw, str) else (k,)
-        if "\0" in pattern or Path(pattern).is_absolute() or pattern.startswith("~") or "\\" in pattern or ":" in pattern:
+        if (
+            "\0" in pattern
+            or Path(pattern).is_absolute()
+            or pattern.startswith("~")
+            or "\\" in pattern
+            or ":" in pattern
+        ):
             raise _Bad(
-                "only paths relative to the pipeline file are allowed", pattern, path=path,
+                "only paths relative to the pipeline file are allowed",
+                pattern,
+                path=path,
                 remedy="write it relative, with / as separator; name another folder with --allow FOLDER",
             )
         target = folders.home / pattern
@@ -263,7 +281,9 @@ def _paths(raw: Any, kind: str, folders: Folders) -> Path | tuple[Path, ...]:
         for match in matches or [target]:
             if not folders.inside(match):
                 raise _Bad(
-                    "leaves the pipeline's folder", pattern, path=path,
+                    "leaves the pipeline's folder",
+                    pattern,
+                    path=path,
                     allowed="files below the pipeline file or an allowed folder",
                     remedy="give the folder with --allow FOLDER",
                 )

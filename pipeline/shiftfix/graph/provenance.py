@@ -62,7 +62,9 @@ def json_text(document: Mapping[str, Any]) -> str:
 def versions(distributions: set[str]) -> dict[str, str]:
     """Return the versions of Python, of the core libraries and of the distributions that gave plugins."""
     out = {"python": platform.python_version()}
-    for name in sorted({"numpy", "scipy", "pandas", "networkx", "pluggy", "pyerfa", "astropy-iers-data", *distributions}):
+    for name in sorted(
+        {"numpy", "scipy", "pandas", "networkx", "pluggy", "pyerfa", "astropy-iers-data", *distributions}
+    ):
         try:
             out[name] = metadata.version(name)
         except metadata.PackageNotFoundError:
@@ -97,7 +99,9 @@ def verify_run(folder: str | Path) -> dict[str, Any]:
         raise VerificationError(Problem(str(folder), "not a readable run folder", found=str(error))) from error
     if sealed != f"{sha256(content)}  {RECORD}\n":
         raise VerificationError(
-            Problem(f"{folder.name}/{RECORD}", "does not match its seal", found=sha256(content)[:16], allowed=sealed[:16])
+            Problem(
+                f"{folder.name}/{RECORD}", "does not match its seal", found=sha256(content)[:16], allowed=sealed[:16]
+            )
         )
     for name, expected in record["products"].items():
         _compare(problems, f"{folder.name}/{name}", folder / name, expected)

@@ -120,7 +120,9 @@ class Registry:
     def _import(self, name: str) -> tuple[RegisteredNode, ...]:
         points = self._points.get(name)
         if not points:
-            raise PluginError(Problem(f"plugin {name}", "no such plugin", allowed=", ".join(self.names()) or "none is installed"))
+            raise PluginError(
+                Problem(f"plugin {name}", "no such plugin", allowed=", ".join(self.names()) or "none is installed")
+            )
         if len(points) > 1:
             raise PluginError(Problem(f"plugin {name}", self._clash(name)))
         point = points[0]
@@ -128,7 +130,9 @@ class Registry:
         entry = PluginEntry(name, point.value, distribution, version, "loaded")
         where = f"plugin {name} ({distribution} {version})"
         if not _NAME.match(name):
-            raise PluginError(Problem(where, "bad entry-point name", found=name, allowed="lower-case letters, digits, _"))
+            raise PluginError(
+                Problem(where, "bad entry-point name", found=name, allowed="lower-case letters, digits, _")
+            )
         try:
             module = point.load()
         except BaseException as error:
@@ -151,7 +155,9 @@ class Registry:
             nodes = [node for group in manager.hook.shiftfix_nodes() for node in group]
             motions = [motion for group in manager.hook.shiftfix_motions() for motion in group]
         except Exception as error:
-            raise PluginError(Problem(where, "does not keep to the hooks", found=f"{type(error).__name__}: {error}")) from error
+            raise PluginError(
+                Problem(where, "does not keep to the hooks", found=f"{type(error).__name__}: {error}")
+            ) from error
         self._check(where, nodes, motions)
         self._loaded[name] = tuple(RegisteredNode(f"{name}.{n.name}", n, entry) for n in nodes)
         self._hooks[name] = manager
@@ -168,14 +174,18 @@ class Registry:
         seen: set[str] = set()
         for node in nodes:
             if not isinstance(node, NodeSpec):
-                problems.append(Problem(where, "shiftfix_nodes gave something else than NodeSpec", found=type(node).__name__))
+                problems.append(
+                    Problem(where, "shiftfix_nodes gave something else than NodeSpec", found=type(node).__name__)
+                )
             elif not _NAME.match(node.name) or node.name in seen:
                 problems.append(Problem(where, f"bad or repeated node name {node.name!r}"))
             else:
                 seen.add(node.name)
         for motion in motions:
             if not isinstance(motion, MotionSpec):
-                problems.append(Problem(where, "shiftfix_motions gave something else than MotionSpec", found=type(motion).__name__))
+                problems.append(
+                    Problem(where, "shiftfix_motions gave something else than MotionSpec", found=type(motion).__name__)
+                )
         if problems:
             raise PluginError(problems)
 

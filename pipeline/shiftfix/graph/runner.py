@@ -85,7 +85,11 @@ def run_pipeline(
     DefinitionError, PluginError
         Before anything ran. What happens later stands in `error` of the result.
     """
-    definition = file if isinstance(file, Definition) else read_definition(file, allow=allow, overrides=overrides, registry=registry)
+    definition = (
+        file
+        if isinstance(file, Definition)
+        else read_definition(file, allow=allow, overrides=overrides, registry=registry)
+    )
 
     def check_cancelled() -> None:
         if cancel is not None and cancel.is_set():
@@ -125,7 +129,9 @@ def _clear(folder: Path) -> None:
             target.unlink()
 
 
-def _finish(definition: Definition, execution: Execution, folder: Path | None, seed: int, trouble: list[str]) -> RunResult:
+def _finish(
+    definition: Definition, execution: Execution, folder: Path | None, seed: int, trouble: list[str]
+) -> RunResult:
     final = final_verdict(definition, execution)
     solution = final if isinstance(final, Solution) else None
     error = execution.error
@@ -149,11 +155,17 @@ def _finish(definition: Definition, execution: Execution, folder: Path | None, s
     return RunResult(code, verdict, solution, document, execution.tables, execution.products, warnings, folder, error)
 
 
-def _record(definition, execution: Execution, folder: Path, seed: int, verdict: str, code: int, warnings) -> dict[str, Any]:
+def _record(
+    definition, execution: Execution, folder: Path, seed: int, verdict: str, code: int, warnings
+) -> dict[str, Any]:
     home = definition.folders.home
     return {
         "schema": provenance.SCHEMA,
-        "state": "interrupted" if isinstance(execution.error, RunCancelled) else "failed" if execution.error else "finished",
+        "state": "interrupted"
+        if isinstance(execution.error, RunCancelled)
+        else "failed"
+        if execution.error
+        else "finished",
         "verdict": verdict,
         "exit_code": code,
         "title": definition.title,

@@ -29,7 +29,9 @@ def bundled_earth_orientation() -> EarthOrientation:
     with open(path, "rb") as handle:
         lines = handle.read().split(b"\n")
     width = 188
-    block = np.frombuffer(b"".join(line.ljust(width)[:width] for line in lines if line.strip()), dtype="S1").reshape(-1, width)
+    block = np.frombuffer(b"".join(line.ljust(width)[:width] for line in lines if line.strip()), dtype="S1").reshape(
+        -1, width
+    )
 
     def column(first: int, last: int) -> np.ndarray:
         text = np.ascontiguousarray(block[:, first - 1 : last]).view(f"S{last - first + 1}").ravel()

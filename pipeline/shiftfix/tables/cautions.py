@@ -37,7 +37,9 @@ _BY_CLASS = {
         "PERSONAL DEVICE: this emitter may mark a person. Use only with consent or lawful authority; redact positions before "
         "they leave the service.",
     ),
-    "wildlife": ("WILDLIFE: coarsen positions before they are published, so that they do not lead poachers to the animals.",),
+    "wildlife": (
+        "WILDLIFE: coarsen positions before they are published, so that they do not lead poachers to the animals.",
+    ),
     "military": ("MILITARY OR SECURITY: do not publish; ask the competent authority before any further step.",),
     "space": (
         "SPACE: not for collision avoidance or manoeuvre decisions. Operators and the authorised space-surveillance services decide.",

@@ -59,7 +59,9 @@ class FrequencyTable(Table):
         Column("arc_id", "text", "arc or pass, empty when not divided", default=""),
         Column("time_tai_ns", "int", "reception time, middle of the interval, ns of TAI since 1970"),
         Column("interval_s", "float", "length of the count interval, 0 for instantaneous", default=0.0, minimum=0.0),
-        Column("received_frequency_hz", "float", "mean received frequency at sky level", minimum=0.0, strict_minimum=True),
+        Column(
+            "received_frequency_hz", "float", "mean received frequency at sky level", minimum=0.0, strict_minimum=True
+        ),
         Column("received_frequency_sigma_hz", "float", "1-sigma of that mean", minimum=0.0, strict_minimum=True),
         Column("nominal_frequency_hz", "float", "nominal frequency of the channel", minimum=0.0, strict_minimum=True),
         Column("phase_arc_id", "text", "consecutive counts of one unbroken phase record share it", default=""),
@@ -105,5 +107,8 @@ def merge_frequency_tables(tables: Sequence[FrequencyTable]) -> FrequencyTable:
         for source in table.sources:
             sources.setdefault((source.name, source.sha256), source)
     return FrequencyTable(
-        rows=rows.iloc[order], sources=tuple(sources.values()), rejects=tuple(rejects), notes=tuple(dict.fromkeys(notes))
+        rows=rows.iloc[order],
+        sources=tuple(sources.values()),
+        rejects=tuple(rejects),
+        notes=tuple(dict.fromkeys(notes)),
     )

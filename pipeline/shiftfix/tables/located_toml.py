@@ -66,7 +66,9 @@ def parse_located_toml(content: bytes, name: str) -> LocatedDocument:
         text = content.decode("utf-8")
     except UnicodeDecodeError as error:
         line = content[: error.start].count(b"\n") + 1
-        raise TomlSyntaxError(Problem(f"{name}:{line}:1", "the file is not UTF-8 text", allowed="TOML in UTF-8")) from None
+        raise TomlSyntaxError(
+            Problem(f"{name}:{line}:1", "the file is not UTF-8 text", allowed="TOML in UTF-8")
+        ) from None
     try:
         values = tomllib.loads(text)
     except tomllib.TOMLDecodeError as error:
@@ -78,7 +80,9 @@ def parse_located_toml(content: bytes, name: str) -> LocatedDocument:
             match = re.search(r"\(at line (\d+), column (\d+)\)", message)
             end = "(at end of document)" in message
             lines = text.splitlines() or [""]
-            line, column = (int(match[1]), int(match[2])) if match else ((len(lines), len(lines[-1]) + 1) if end else (1, 1))
+            line, column = (
+                (int(match[1]), int(match[2])) if match else ((len(lines), len(lines[-1]) + 1) if end else (1, 1))
+            )
         what = message.split(" (at ")[0]
         shown = (text.splitlines() or [""])[min(line, len(text.splitlines()) or 1) - 1].strip()
         raise TomlSyntaxError(Problem(f"{name}:{line}:{column}", f"not valid TOML: {what}", found=shown)) from None
@@ -106,8 +110,9 @@ def _walk_document(content: bytes, keys: dict, places: dict) -> None:
                 counts[prefix] = counts.get(prefix, -1) + 1
                 prefix = (*prefix, counts[prefix])
             place = (node.start_point[0] + 1, node.start_point[1] + 1)
-            keys.setdefault(prefix, place)
-            places.setdefault(prefix, place)
+            for end in range(1, len(prefix) + 1):
+                keys.setdefault(prefix[:end], place)
+                places.setdefault(prefix[:end], place)
             for child in node.children:
                 if child.type == "pair":
                     _walk_pair(child, prefix, keys, places)
@@ -134,7 +139,9 @@ def _key_parts(node: Any) -> tuple[str, ...]:
 
 def _walk_pair(node: Any, prefix: KeyPath, keys: dict, places: dict) -> None:
     named = [c for c in node.children if c.type in ("bare_key", "quoted_key", "dotted_key")]
-    values = [c for c in node.children if c.is_named and c.type not in ("bare_key", "quoted_key", "dotted_key", "comment")]
+    values = [
+        c for c in node.children if c.is_named and c.type not in ("bare_key", "quoted_key", "dotted_key", "comment")
+    ]
     if not named or not values:
         return
     path = (*prefix, *_key_parts(named[0]))

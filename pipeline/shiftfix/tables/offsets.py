@@ -34,7 +34,12 @@ class OffsetTable(Table):
         Column("phase_arc_id", "text", "unbroken clock-phase history", default=""),
         Column("time_offset_start_s", "float", "time tag minus true time at the start", default=0.0),
         Column("time_offset_stop_s", "float", "time tag minus true time at the end", default=0.0),
-        Column("zenith_correction_m", "float", "zenith tropospheric delay minus that of the standard atmosphere", default=0.0),
+        Column(
+            "zenith_correction_m",
+            "float",
+            "zenith tropospheric delay minus that of the standard atmosphere",
+            default=0.0,
+        ),
         Column("known_emitters_1", "int", "number of known emitters used", default=0),
     )
     datum: str = ""

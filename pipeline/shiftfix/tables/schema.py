@@ -13,7 +13,24 @@ import pandas as pd
 
 from shiftfix.errors import Problem, SchemaError
 
-UNIT_SUFFIXES = ("_hz", "_hz_s", "_db_hz", "_s", "_ns", "_m", "_m_s", "_m_s2", "_rad", "_deg", "_k", "_pa", "_db", "_1", "_1_s", "_rad_s")
+UNIT_SUFFIXES = (
+    "_hz",
+    "_hz_s",
+    "_db_hz",
+    "_s",
+    "_ns",
+    "_m",
+    "_m_s",
+    "_m_s2",
+    "_rad",
+    "_deg",
+    "_k",
+    "_pa",
+    "_db",
+    "_1",
+    "_1_s",
+    "_rad_s",
+)
 """Closed list of unit suffixes; `_1` is dimensionless and `_1_s` is per second."""
 
 
@@ -164,7 +181,9 @@ def _validated(table: str, columns: tuple[Column, ...], rows: pd.DataFrame) -> p
                     sign = ">" if column.strict_minimum else ">="
                     problems.append(_violation(where, "value too small", values, bad, f"{sign} {column.minimum:g}"))
             if column.maximum is not None and (values > column.maximum).any():
-                problems.append(_violation(where, "value too large", values, values > column.maximum, f"<= {column.maximum:g}"))
+                problems.append(
+                    _violation(where, "value too large", values, values > column.maximum, f"<= {column.maximum:g}")
+                )
         out[column.name] = values
     for name in rows.columns:
         if name in known:

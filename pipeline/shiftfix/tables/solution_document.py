@@ -57,9 +57,7 @@ def solution_document(solution: Solution, *, title: str, emitter_classes: Sequen
         "chi_square": solution.chi_square,
         "degrees_of_freedom": solution.degrees_of_freedom,
         "odds": solution.odds,
-        "alternatives": [
-            {"state": _clean(a.state), "odds": a.odds, "rms": a.rms} for a in solution.alternatives
-        ],
+        "alternatives": [{"state": _clean(a.state), "odds": a.odds, "rms": a.rms} for a in solution.alternatives],
         "converged": solution.converged,
         "rank_full": solution.rank_full,
         "at_bound": solution.at_bound,
