@@ -10,7 +10,9 @@ from shiftfix.physics.timescales import tai_ns_from_utc, tt_jd
 from shiftfix.tables.bundled_orientation import bundled_earth_orientation
 
 COLUMNS = ("mjd_utc_1", "ut1_minus_tai_s", "xp_rad", "yp_rad", "dx_rad", "dy_rad")
-PLACES = itrs_from_geodetic(np.radians([-41.3, 0.1, 78.2, 12.0]), np.radians([-27.5, 179.0, 15.4, 77.6]), np.array([5.0, 0, 400, 9e3]))
+PLACES = itrs_from_geodetic(
+    np.radians([-41.3, 0.1, 78.2, 12.0]), np.radians([-27.5, 179.0, 15.4, 77.6]), np.array([5.0, 0.0, 400.0, 9e3])
+)
 
 
 @pytest.fixture(scope="module")
@@ -39,7 +41,10 @@ def erfa_rotation(epoch_tai_ns, seconds, day, ut1_minus_tai_s):
     return erfa.c2tcio(erfa.c2ixys(x + day["dx_rad"], y + day["dy_rad"], s), erfa.era00(jd1, ut1), pole).T
 
 
-@pytest.mark.parametrize(("text", "mjd"), [("1998-09-10T00:00:00Z", 51066), ("2012-06-15T00:00:00Z", 56093), ("2024-03-01T00:00:00Z", 60370)])
+@pytest.mark.parametrize(
+    ("text", "mjd"),
+    [("1998-09-10T00:00:00Z", 51066), ("2012-06-15T00:00:00Z", 56093), ("2024-03-01T00:00:00Z", 60370)],
+)
 def test_positions_and_velocities_against_astropy_on_days_of_the_table(text, mjd, table):
     """At 0 h both take the table's values; astropy has no celestial pole offsets here, so ours are put to zero."""
     from astropy.coordinates.builtin_frames.intermediate_rotation_transforms import cirs_to_itrs_mat, gcrs_to_cirs_mat
@@ -70,7 +75,7 @@ def test_positions_and_velocities_against_astropy_on_days_of_the_table(text, mjd
                 # x' by central differences; third-order term omega**3 h**2/6 taken off.
                 rate = (rotations[2] - rotations[0]) @ place / 40.0
                 rate = rate * (1.0 + (7.292115e-5 * 20.0) ** 2 / 6.0)
-                slope = (table["ut1_minus_tai_s"][table["mjd_utc_1"] == mjd + k + 1] - table["ut1_minus_tai_s"][table["mjd_utc_1"] == mjd + k]) / 86400.0
+                slope = (at_day(table, mjd + k + 1)["ut1_minus_tai_s"] - at_day(table, mjd + k)["ut1_minus_tai_s"]) / 86400.0
                 rate = rate + slope * np.cross([0, 0, 7.292115e-5], rotations[1] @ place)
                 assert np.abs(states.velocity[0] - rate).max() <= 1e-5
 
@@ -125,7 +130,6 @@ def test_there_and_back(table):
 def test_degraded_frame_stays_within_its_bound(table):
     """UT1 = UTC and no polar motion: the largest offsets between leap seconds since 1973 keep inside 420 m."""
     worst = 0.0
-    utc = table["mjd_utc_1"]
     for mjd in (42778, 44238, 50628, 51178, 56107, 57202, 57753, 60370):
         year, month, day, _ = erfa.jd2cal(2400000.5, mjd)
         text = f"{year:04d}-{month:02d}-{day:02d}T00:00:00Z"
@@ -133,8 +137,9 @@ def test_degraded_frame_stays_within_its_bound(table):
         assert bare.degraded and not full.degraded and full.bound_m == 0.0
         times = np.array([0.0, 600.0])
         for place in PLACES[:3]:
-            worst = max(worst, np.abs(np.linalg.norm(full.to_gcrs(times, place).position - bare.to_gcrs(times, place).position, axis=1)).max())
-    assert utc.size and 200.0 < worst < bare.bound_m
+            apart = full.to_gcrs(times, place).position - bare.to_gcrs(times, place).position
+            worst = max(worst, np.linalg.norm(apart, axis=1).max())
+    assert 200.0 < worst < bare.bound_m
 
 
 def test_span_outside_the_table_is_refused(table):

@@ -184,6 +184,7 @@ def _fixed_width(texts: np.ndarray, scale: str, require_z: bool) -> tuple[np.nda
     ended = np.zeros(len(texts), bool)
     zulu = np.zeros(len(texts), bool)
     fraction = np.zeros(len(texts), bool)
+    figures = np.zeros(len(texts), bool)
     scale_now = np.full(len(texts), 100_000_000, np.int64)
     for k in range(19, width):
         c = bytes_[:, k]
@@ -195,8 +196,10 @@ def _fixed_width(texts: np.ndarray, scale: str, require_z: bool) -> tuple[np.nda
         nanosecond += np.where(is_digit, digit[:, k].astype(np.int64) * scale_now, 0)
         scale_now = np.where(is_digit, scale_now // 10, scale_now)
         fraction |= point
+        figures |= is_digit
         zulu |= z
         ended |= blank | z
+    ok &= figures | ~fraction
     ok &= (month >= 1) & (month <= 12) & (day >= 1) & (hour < 24) & (minute < 60) & (second < 60)
     ok &= zulu if scale == "UTC" and require_z else np.ones_like(ok)
     if scale != "UTC":
