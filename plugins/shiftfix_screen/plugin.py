@@ -13,6 +13,7 @@ class SelectParams:
 
     emitters: tuple[str, ...] = param("emitters to keep; empty keeps all but the excluded ones", default=())
     exclude_emitters: tuple[str, ...] = param("emitters to leave to other nodes", default=())
+    name_emitter: str = param("name for rows whose emitter is unnamed in the log", default="")
     stations: tuple[str, ...] = param("stations to keep; empty keeps all but the excluded ones", default=())
     exclude_stations: tuple[str, ...] = param("stations whose rows are flagged reject", default=())
     start: str = param("UTC before which rows are flagged reject; empty: none", default="")

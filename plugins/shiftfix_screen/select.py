@@ -10,6 +10,9 @@ from shiftfix.api import InputError, Problem, merge_frequency_tables, tai_ns_fro
 def select(tables, params):
     """Return the merged table of the chosen emitters; rows outside stations or times are flagged reject."""
     table = merge_frequency_tables(tables)
+    if params.name_emitter:
+        named = np.where(table.array("emitter_id").astype(str) == "", params.name_emitter, table.array("emitter_id"))
+        table = table.with_rows(table.rows.assign(emitter_id=named))
     emitter = table.array("emitter_id").astype(str)
     station = table.array("station_id").astype(str)
     _check("emitter", (*params.emitters, *params.exclude_emitters), emitter)

@@ -71,12 +71,12 @@ def pack(answer, arc, bound, settings, starts, context) -> Solution:
 def _warnings(answer, arc) -> tuple[str, ...]:
     out = list(arc.table.notes) + list(arc.notes)
     if arc.table.rejects:
-        out.append(f"{len(arc.table.rejects)} rows were rejected when the files were read; run.json lists them")
+        out.append(f"rows rejected when the files were read: {len(arc.table.rejects)}; run.json lists them")
     if arc.excluded:
         reasons: dict[str, int] = {}
         for reason in arc.excluded.values():
             reasons[reason] = reasons.get(reason, 0) + 1
-        out += [f"{count} rows left out: {reason}" for reason, count in sorted(reasons.items())]
+        out += [f"rows left out ({reason}): {count}" for reason, count in sorted(reasons.items())]
     if answer.widened is not None and answer.widened.kind != "formal":
         out.append("the residuals contradict the stated noise; the error was widened to what they show")
     if len(answer.odds) > 1:

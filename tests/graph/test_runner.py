@@ -218,3 +218,15 @@ def test_motion_of_the_same_name_twice_is_an_error(point):
     registry.load("one")
     with pytest.raises(PluginError, match="offered by toy-kitchen too"):
         registry.load("two")
+
+
+def test_missing_module_is_seen_without_importing():
+    from importlib.metadata import EntryPoint
+
+    points = (
+        EntryPoint("ghost", "no_such_module.plugin", "shiftfix.plugins"),
+        EntryPoint("half", "shiftfix.no_such", "shiftfix.plugins"),
+    )
+    states = {e.name: (e.state, e.error) for e in Registry(points).entries()}
+    assert states["ghost"][0] == states["half"][0] == "broken"
+    assert "no_such_module" in states["ghost"][1] and "shiftfix.no_such" in states["half"][1]

@@ -15,8 +15,12 @@ needs_data = pytest.mark.skipif(
     not (SHARED / "data" / "gnss" / "2008_148").is_dir(), reason="the receiver files are not beside this clone"
 )
 MARKS = {
-    "gnss_2008_148/g17.toml": (40.0, 5e-3), "gnss_2008_148/g22.toml": (40.0, 5e-3), "gnss_2008_148/g28.toml": (40.0, 5e-3),
-    "gnss_2021_001/g27.toml": (20.0, 1.0), "gnss_2021_001/g16.toml": (40.0, 1.0), "gnss_2021_001/g08.toml": (60.0, 1.0),
+    "gnss_2008_148/g17.toml": (40.0, 5e-3),
+    "gnss_2008_148/g22.toml": (40.0, 5e-3),
+    "gnss_2008_148/g28.toml": (40.0, 5e-3),
+    "gnss_2021_001/g27.toml": (20.0, 1.0),
+    "gnss_2021_001/g16.toml": (40.0, 1.0),
+    "gnss_2021_001/g08.toml": (60.0, 1.0),
     "gnss_2021_001/g07.toml": (200.0, 1.0),
 }
 

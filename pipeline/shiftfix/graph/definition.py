@@ -171,8 +171,7 @@ class _Reader:
                 found=" -> ".join([*cycle, cycle[0]]),
             )
         if self.problems:
-            order = {(p.where.split(": ")[0]): k for k, p in enumerate(self.problems)}
-            raise DefinitionError(sorted(self.problems, key=lambda p: (_line(p.where), order[p.where.split(": ")[0]])))
+            raise DefinitionError(sorted(self.problems, key=lambda p: _line(p.where)))
         defined = {
             name: DefinedNode(
                 name,

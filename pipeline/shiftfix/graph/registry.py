@@ -2,11 +2,13 @@
 
 from __future__ import annotations
 
+import importlib.util
 import re
 import threading
 from collections.abc import Iterator, Mapping
 from dataclasses import dataclass
 from importlib import metadata
+from pathlib import Path
 
 import pluggy
 
@@ -82,6 +84,8 @@ class Registry:
                     state, error = "broken", str(self._errors[name])
                 elif name in self._loaded:
                     state = "loaded"
+                elif missing := _missing_module(point):
+                    state, error = "broken", missing
                 out.append(PluginEntry(name, point.value, *_distribution(point), state, error))
         return tuple(out)
 
@@ -243,6 +247,27 @@ class _Lazy(Mapping):
 
     def __len__(self) -> int:
         return len(self._all())
+
+
+def _missing_module(point: metadata.EntryPoint) -> str:
+    """Return why the module of an entry point cannot be found, looking for its file without importing it."""
+    first, *rest = point.value.partition(":")[0].split(".")
+    if not isinstance(point, metadata.EntryPoint):
+        return ""
+    try:
+        spec = importlib.util.find_spec(first)
+    except (ImportError, ValueError) as error:
+        return str(error)
+    if spec is None:
+        return f"ModuleNotFoundError: no module named {first!r}"
+    for part in rest:
+        folders = [Path(f) for f in (spec.submodule_search_locations or ())] if spec else []
+        found = [f / part for f in folders if (f / part).is_dir()] + [f for f in folders if list(f.glob(f"{part}.*"))]
+        if not found:
+            return f"ModuleNotFoundError: no module named {point.value!r}"
+        if part != rest[-1]:
+            return ""
+    return ""
 
 
 def _distribution(point: metadata.EntryPoint) -> tuple[str, str]:

@@ -105,5 +105,6 @@ def _term(text: str, unit: str, whole: str) -> tuple[float, str]:
         if spelling in known:
             raise ValueError(f"found {whole!r}, a quantity in {other}; needed is one in {unit} ({allowed})")
     close = [s for s in spellings if s.lower() == spelling.lower()]
+    close.sort(key=lambda s: -sum(a == b for a, b in zip(s, spelling, strict=True)))
     hint = f"; did you mean {close[0]}?" if close else ""
     raise ValueError(f"found {whole!r} with the unknown unit {spelling!r}{hint}; allowed units: {allowed}")

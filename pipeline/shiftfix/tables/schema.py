@@ -151,6 +151,9 @@ def _validated(table: str, columns: tuple[Column, ...], rows: pd.DataFrame) -> p
         if column.name not in rows:
             if not column.required:
                 continue
+            if not count:
+                out[column.name] = np.empty(0, dtype=_DTYPES.get(column.kind, object))
+                continue
             if column.default is None:
                 problems.append(Problem(where, "required column is missing", allowed=column.meaning))
                 continue

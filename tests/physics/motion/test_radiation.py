@@ -3,8 +3,8 @@
 import erfa
 import numpy as np
 import pytest
-from shiftfix.physics.constants import AU_M
 
+from shiftfix.physics.constants import AU_M
 from shiftfix.physics.motion.bodies import SunMoon, tidal_acceleration
 from shiftfix.physics.motion.radiation import lit_fraction, radiation_acceleration
 
