@@ -46,6 +46,17 @@ def test_uniform_motion_has_a_closed_form(largest):
     assert (np.abs(link.light_time_s - expected) / expected).max() < 2e-13
 
 
+def test_last_correction_moves_the_emitter_too():
+    """Scene by scene, so that the last step has every size below 1e-9 s (0.3 m near light)."""
+    random = np.random.default_rng(2)
+    worst = 0.0
+    for velocity, receiver in zip(C * random_velocities(random, 400, 0.9), random_directions(random, 400), strict=True):
+        receiver = receiver[None] * 10.0 ** random.uniform(3, 7)
+        link = one_way([0.0], receiver, UniformPaths(np.zeros((1, 3)), velocity[None]), shapiro=False)
+        worst = max(worst, np.abs(link.emitter.position + velocity * link.light_time_s[:, None]).max())
+    assert worst < 1e-7
+
+
 def test_reciprocity_between_resting_ends():
     a, b = np.array([[7e6, 1e5, -3e6]]), np.array([[-1e6, 6.3e6, 4e5]])
     zero = np.zeros((1, 3))

@@ -69,7 +69,7 @@ def log_ratio_precise(
 
     `log_ratio` is good to 5e-15 of the larger of |ln D| and v/c; where approach and time dilation cancel (|ln D| far
     below v/c) its accuracy relative to ln D is worse. Here the definition is evaluated in pairs of doubles, good to
-    1e-15 of ln D. Some thirty times slower: for checks.
+    1e-15 of ln D. Twelve times slower: for checks.
     """
     one, two = doubled.pair(1.0), doubled.pair(2.0)
     n = doubled.pair(link.direction)
