@@ -75,6 +75,7 @@ def fix(inputs, params, context):
             vertical_tec=params.vertical_tec_sigma,
             carrier_hz=arc.rows.reference_hz,
             # UT1 - UTC is within 0.9 s and drifts through that range evenly: 0.5 s as 1-sigma.
+            emitter_flicker_1=params.emitter_flicker,
             loading_m=params.loading_sigma,
             forces_1=params.force_model_sigma,
             antenna_m=params.emitter_antenna_sigma if bound.frame == "GCRS" else 0.0,

@@ -100,6 +100,12 @@ class FixParams:
     emitter_antenna_sigma: float = param(
         "considered distance of a satellite's antenna from its centre of mass", default=1.0, unit="m", minimum=0.0
     )
+    emitter_flicker: float = param(
+        "considered slow variations of the emitter's frequency that its model leaves out, as an amplitude",
+        default=0.0,
+        unit="1",
+        minimum=0.0,
+    )
     common_time_sigma: float = param(
         "considered time-tag error that all stations share", default=0.0, unit="s", minimum=0.0
     )

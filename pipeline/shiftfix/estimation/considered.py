@@ -14,6 +14,8 @@ from shiftfix.estimation.receivers import Receiver
 from shiftfix.physics.constants import EARTH_RADIUS_M, GM_EARTH_M3_S2, OMEGA_EARTH_RAD_S, SPEED_OF_LIGHT_M_S
 from shiftfix.physics.motion.states import States
 
+PHASE_ADVANCE_M3_S2 = 40.308193  # e**2 / (8 pi**2 eps0 m_e): phase advance = this x electrons per square metre / f**2
+
 
 @dataclass(frozen=True)
 class Considered:
@@ -28,7 +30,8 @@ class Considered:
     coordinates : bool
         Whether each station's coordinate sigma is considered.
     zenith_delay_m : float
-        Error of the zenith tropospheric delay, independent from station to station.
+        Error of the zenith tropospheric delay, independent from station to station and, on arcs of more than an hour,
+        from one node of 90 minutes to the next (linear between them): weather changes within an arc.
     vertical_tec : float
         Unmodelled vertical electron content [1e16 /m2], independent from station to station.
     carrier_hz : float
@@ -41,6 +44,9 @@ class Considered:
     loading_m : float
         Height of ground stations that varies within hours and is not modelled (ocean loading, remainder of the tide), as
         amplitude of sine and cosine of twelve hours, independent from station to station.
+    emitter_flicker_1 : float
+        Slow variations of the emitter's fractional frequency that its model leaves out (flicker, periodic terms): the
+        amplitude of sine and cosine of the arc's length and of its half.
     ut1_s : float
         Error of UT1 when no Earth orientation is used: all Earth-fixed receivers turn together.
     """
@@ -55,12 +61,13 @@ class Considered:
     forces_1: float = 0.0
     antenna_m: float = 0.0
     loading_m: float = 0.0
+    emitter_flicker_1: float = 0.0
 
 
 def considered_changes(fit: Fit, considered: Considered) -> dict[str, np.ndarray]:
     """Return, by source, the 1-sigma changes of z that considered errors cause: (n, k) columns, independent of each other.
 
-    Sources are `time tags`, `coordinates`, `loading`, `Earth rotation`, `forces`, `emitter antenna`, `troposphere` and
+    Sources are `time tags`, `coordinates`, `loading`, `Earth rotation`, `forces`, `emitter antenna`, `emitter oscillator`, `troposphere` and
     `ionosphere`; absent when nothing is considered.
     """
     forward, rows = fit.forward, fit.forward.rows
@@ -93,6 +100,10 @@ def considered_changes(fit: Fit, considered: Considered) -> dict[str, np.ndarray
             columns += [change * mine[:, s] for s in range(len(receivers)) if (change * mine[:, s]).any()]
         if columns:
             out["loading"] = columns
+    if considered.emitter_flicker_1:
+        phase = 2.0 * np.pi * (rows.middle_s - rows.middle_s.min()) / max(float(np.ptp(rows.middle_s)), 1.0)
+        waves = [wave(k * phase) for k in (1, 2) for wave in (np.sin, np.cos)]
+        out["emitter oscillator"] = [considered.emitter_flicker_1 * wave for wave in waves]
     if considered.ut1_s:
         slopes = _coordinate_slopes(forward, fit)
         turned = [np.cross([0.0, 0.0, OMEGA_EARTH_RAD_S], _itrs(r)) * considered.ut1_s for r in receivers]
@@ -106,15 +117,25 @@ def considered_changes(fit: Fit, considered: Considered) -> dict[str, np.ndarray
     if considered.zenith_delay_m or considered.vertical_tec:
         link = forward.links(fit.path)
         if considered.zenith_delay_m:
-            rate = _plain_rate(forward, forward.zenith_mapping(link)) * considered.zenith_delay_m
-            out["troposphere"] = [rate * mine[:, s] for s in range(len(receivers)) if (rate * mine[:, s]).any()]
+            mapping = forward.zenith_mapping(link) * considered.zenith_delay_m
+            rates = [_plain_rate(forward, mapping * share) for share in _hours(forward.event_times_s)]
+            out["troposphere"] = [r * mine[:, s] for r in rates for s in range(len(receivers)) if (r * mine[:, s]).any()]
         if considered.vertical_tec and considered.carrier_hz:
             # Phase advance of a thin shell at 350 km: 40.308e16 TEC / f**2 metres, opposite in sign to a delay.
             mapping = _shell_mapping(forward.sin_elevation(link))
-            delay = 40.308193e16 * considered.vertical_tec / considered.carrier_hz**2
+            delay = PHASE_ADVANCE_M3_S2 * 1e16 * considered.vertical_tec / considered.carrier_hz**2
             rate = -_plain_rate(forward, mapping) * delay
             out["ionosphere"] = [rate * mine[:, s] for s in range(len(receivers)) if (rate * mine[:, s]).any()]
     return {name: np.column_stack(columns) for name, columns in out.items() if columns}
+
+
+def _hours(times_s: np.ndarray, step_s: float = 5400.0) -> list[np.ndarray]:
+    """Return the shares of nodes at most `step_s` apart at given times, linear between nodes; one share of 1 in an hour."""
+    first, span = float(times_s.min()), float(np.ptp(times_s))
+    if span < 3600.0:
+        return [np.ones_like(times_s)]
+    nodes = np.linspace(first, first + span, int(np.ceil(span / step_s)) + 1)
+    return [np.interp(times_s, nodes, row) for row in np.eye(nodes.size)]
 
 
 class _Outward:
