@@ -95,7 +95,11 @@ def test_failures_have_their_codes_and_no_traceback(tmp_path, arguments, code, w
 
 
 def test_help_loads_nothing_heavy(tmp_path):
-    code = "import sys; sys.argv=['shiftfix','--help']\nfrom shiftfix.cli.main import main\ntry: main()\nexcept SystemExit: pass\nprint([m for m in ('numpy','pandas','scipy','shiftfix.api','rich','networkx') if m in sys.modules])"
+    code = (
+        "import sys; sys.argv=['shiftfix','--help']\nfrom shiftfix.cli.main import main\n"
+        "try: main()\nexcept SystemExit: pass\n"
+        "heavy = ('numpy','pandas','scipy','shiftfix.api','rich','networkx')\nprint([m for m in heavy if m in sys.modules])"
+    )
     answer = subprocess.run([sys.executable, "-c", code], capture_output=True, text=True, cwd=tmp_path)
     assert answer.stdout.splitlines()[-1] == "[]"
     assert "Exit codes" in answer.stdout

@@ -153,7 +153,8 @@ def test_all_problems_come_in_one_message_in_the_order_of_the_file(tmp_path, kit
 
 
 def test_circle_is_shown(tmp_path, kitchen):
-    text = 'shiftfix = 1\n[nodes.a]\nuse = "kitchen.serve"\ninputs.dish = "b"\n[nodes.b]\nuse = "kitchen.cook"\ninputs.things = ["c"]\n'
+    text = 'shiftfix = 1\n[nodes.a]\nuse = "kitchen.serve"\ninputs.dish = "b"\n'
+    text += '[nodes.b]\nuse = "kitchen.cook"\ninputs.things = ["c"]\n'
     path = tmp_path / "meal.toml"
     path.write_text(text + '[nodes.c]\nuse = "kitchen.cook"\ninputs.things = ["b"]\n')
     with pytest.raises(DefinitionError) as caught:

@@ -75,7 +75,8 @@ def test_its_log_is_solved_in_a_pipeline(environment, tmp_path):
     (tmp_path / "quoin.vrx").write_text("\n".join(lines) + "\n")
     text = (DEMO / "pipeline.toml").read_text()
     start, stop = text.index("[nodes.quoin]"), text.index("[nodes.bastle]")
-    node = '[nodes.quoin]\nuse = "veldane.vrx1"\nparams.files = "*.vrx"\n\n[nodes.named]\nuse = "screen.select"\ninputs.frequencies = "quoin"\nparams.name_emitter = "TAMSIN-1"\n\n'
+    node = '[nodes.quoin]\nuse = "veldane.vrx1"\nparams.files = "*.vrx"\n\n[nodes.named]\nuse = "screen.select"\n'
+    node += 'inputs.frequencies = "quoin"\nparams.name_emitter = "TAMSIN-1"\n\n'
     text = text[:start] + node + text[stop:].replace('"quoin"', '"named"')
     (tmp_path / "pipeline.toml").write_text(text)
     answer = shiftfix(environment, "run", "pipeline.toml", "--json", cwd=tmp_path)

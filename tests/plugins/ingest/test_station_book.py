@@ -104,10 +104,8 @@ def test_station_on_a_ship_takes_its_track(tmp_path):
         "utc,lat,lon,h\n" + "\n".join(f"2026-03-01T12:{k:02d}:00Z,-41.{k:02d},-26.5,15" for k in range(5))
     )
     (tmp_path / "book.toml").write_text('[stations.SHIP]\ntrack = "cutter"\nposition_sigma = "20 m"\nclock = "gnss"\n')
-    text = (
-        PIPELINE
-        + 'inputs.ephemeris = ["track"]\n[nodes.track]\nuse = "ingest.positions"\nparams.files = "track.csv"\nparams.object = "cutter"\n'
-    )
+    text = PIPELINE + 'inputs.ephemeris = ["track"]\n[nodes.track]\nuse = "ingest.positions"\n'
+    text += 'params.files = "track.csv"\nparams.object = "cutter"\n'
     text += 'params.columns = { time = "utc", latitude = "lat", longitude = "lon", height = "h" }\nparams.time_scale = "UTC"\n'
     (tmp_path / "p.toml").write_text(text + 'params.height_kind = "ellipsoid"\n')
     result = run_pipeline(tmp_path / "p.toml")

@@ -9,8 +9,18 @@ from dataclasses import dataclass
 
 import pandas as pd
 
-from shiftfix.api import FrequencyTable, InputError, NodeSpec, Port, Problem, Reject, Source, hookimpl, param
-from shiftfix.api import tai_ns_from_utc
+from shiftfix.api import (
+    FrequencyTable,
+    InputError,
+    NodeSpec,
+    Port,
+    Problem,
+    Reject,
+    Source,
+    hookimpl,
+    param,
+    tai_ns_from_utc,
+)
 
 COLUMNS = ["station_id", "time_tai_ns", "received_frequency_hz", "nominal_frequency_hz", "source", "row_number"]
 
