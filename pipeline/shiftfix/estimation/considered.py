@@ -67,8 +67,8 @@ class Considered:
 def considered_changes(fit: Fit, considered: Considered) -> dict[str, np.ndarray]:
     """Return, by source, the 1-sigma changes of z that considered errors cause: (n, k) columns, independent of each other.
 
-    Sources are `time tags`, `coordinates`, `loading`, `Earth rotation`, `forces`, `emitter antenna`, `emitter oscillator`, `troposphere` and
-    `ionosphere`; absent when nothing is considered.
+    Sources are `time tags`, `coordinates`, `loading`, `Earth rotation`, `forces`, `emitter antenna`,
+    `emitter oscillator`, `troposphere` and `ionosphere`; absent when nothing is considered.
     """
     forward, rows = fit.forward, fit.forward.rows
     receivers = forward.receivers
@@ -119,7 +119,9 @@ def considered_changes(fit: Fit, considered: Considered) -> dict[str, np.ndarray
         if considered.zenith_delay_m:
             mapping = forward.zenith_mapping(link) * considered.zenith_delay_m
             rates = [_plain_rate(forward, mapping * share) for share in _hours(forward.event_times_s)]
-            out["troposphere"] = [r * mine[:, s] for r in rates for s in range(len(receivers)) if (r * mine[:, s]).any()]
+            out["troposphere"] = [
+                r * mine[:, s] for r in rates for s in range(len(receivers)) if (r * mine[:, s]).any()
+            ]
         if considered.vertical_tec and considered.carrier_hz:
             # Phase advance of a thin shell at 350 km: 40.308e16 TEC / f**2 metres, opposite in sign to a delay.
             mapping = _shell_mapping(forward.sin_elevation(link))
