@@ -49,6 +49,8 @@ class Arc:
     epoch_tai_ns : int
     media : Media
     notes : tuple of str
+    offsets : OffsetTable or None
+        Calibrated station offsets that were taken off.
     """
 
     table: FrequencyTable
@@ -60,6 +62,7 @@ class Arc:
     epoch_tai_ns: int
     media: Media
     notes: tuple[str, ...]
+    offsets: OffsetTable | None = None
 
     @property
     def span_s(self) -> tuple[float, float]:
@@ -142,6 +145,7 @@ def build_arc(
         epoch_tai_ns,
         Media(troposphere, day_of_year),
         tuple(notes),
+        offsets,
     )
 
 

@@ -58,7 +58,7 @@ def fix(inputs, params, context):
         rest_log=mean,
         rest_log_sigma=sigma,
     )
-    gates = Gates(params.downweight_beyond, params.reject_beyond, keep_all=params.loss == "plain")
+    gates = Gates(params.downweight_beyond, params.reject_beyond, keep_all=params.keep_all or params.loss == "plain")
     settings = AnswerSettings(
         fit=FitSettings(
             clocks=clocks,

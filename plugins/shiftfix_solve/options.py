@@ -61,6 +61,7 @@ class FixParams:
     loss: str = param(
         "robust: gates and weights; plain: every row at full weight", default="robust", choices=("robust", "plain")
     )
+    keep_all: bool = param("give every row its full weight, whatever its residual (as `loss = plain`)", default=False)
     downweight_beyond: float = param(
         "normalised residual beyond which a row loses weight", default=3.0, minimum=1.0, maximum=100.0
     )

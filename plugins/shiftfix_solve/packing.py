@@ -155,6 +155,8 @@ def _stations(answer, arc, fit, covariance) -> tuple[StationResult, ...]:
                 offset, sigma = float(np.expm1(fit.linear[k])), float(np.sqrt(covariance[p + k, p + k]))
             elif fit.nuisance.datum.startswith(f"reference of {receiver.station_id},"):
                 offset, sigma = receiver.offset, 0.0
+            if arc.offsets is not None:
+                offset, sigma = _calibrated(arc.offsets, receiver.station_id)
             d = fit.nuisance.index(f"drift[{receiver.station_id}]_1_s")
             drift = None if d is None else float(fit.linear[d])
         total = int((ids == receiver.station_id).sum())
@@ -163,6 +165,17 @@ def _stations(answer, arc, fit, covariance) -> tuple[StationResult, ...]:
             StationResult(receiver.station_id, offset, sigma, drift, rms, int(used.sum()), total - int(used.sum()))
         )
     return tuple(out)
+
+
+def _calibrated(offsets, station_id: str) -> tuple[float | None, float | None]:
+    """Return the median calibrated offset of a station over the arc and the 1-sigma of its mean."""
+    mine = offsets.array("station_id").astype(str) == station_id
+    if not mine.any():
+        return None, None
+    phase = np.sqrt(2.0) * offsets.array("phase_sigma_s")[mine] / np.maximum(offsets.array("interval_s")[mine], 1e-9)
+    single = np.median(np.hypot(offsets.array("offset_sigma_1")[mine], phase))
+    common = np.median(offsets.array("common_sigma_1")[mine])
+    return float(np.median(offsets.array("offset_1")[mine])), float(np.hypot(common, single / np.sqrt(mine.sum())))
 
 
 def _parameters(fit, covariance, settings) -> tuple[Parameter, ...]:

@@ -145,3 +145,14 @@ def test_cautions_are_always_there_and_classes_add_theirs():
     with pytest.raises(ValueError, match="allowed"):
         cautions_for(("pirate",))
     assert Quantity(1.0).sigma is None
+
+
+def test_bundled_orientation_says_how_long_it_holds():
+    from shiftfix.api import bundled_earth_orientation
+
+    table = bundled_earth_orientation()
+    days = table.array("mjd_utc_1")
+    assert np.all(np.diff(days) == 1.0) and days[0] < 42000 < table.last_observed_mjd < days[-1]
+    # Leap seconds are announced half a year ahead (IERS Bulletin C): the date lies past the last observed day.
+    assert table.leap_seconds_hold_until_mjd > table.last_observed_mjd
+    assert np.abs(np.diff(table.array("ut1_minus_tai_s"))).max() < 0.01, "no leap second in UT1 - TAI"

@@ -11,6 +11,7 @@ from shiftfix.cli.options import pipeline_options
 @pipeline_options
 @click.option("--out", type=click.Path(file_okay=False), help="Run folder; runs/NAME-OF-THE-FILE when absent.")
 @click.option("--seed", type=click.IntRange(0), help="Seed in place of that of the file.")
+@click.option("--keep-all", is_flag=True, help="Use every row: no flag, gate or weight leaves one out.")
 @click.option("--quiet", is_flag=True, help="No progress, no warnings on stderr.")
 def command(
     file: str,
@@ -21,6 +22,7 @@ def command(
     out: str | None,
     seed: int | None,
     quiet: bool,
+    keep_all: bool,
 ) -> int:
     """Run the pipeline FILE and write its run folder.
 
@@ -34,10 +36,21 @@ def command(
 
     from shiftfix.cli.progress import observer
     from shiftfix.cli.summary import summary_lines
+    from shiftfix.graph.definition import read_definition
     from shiftfix.graph.provenance import json_text
     from shiftfix.graph.runner import run_pipeline
 
     folder = Path(out) if out else Path("runs") / Path(file).stem
+    if keep_all:
+        definition = read_definition(file, allow=allow, overrides=overrides)
+        overrides = (
+            *overrides,
+            *(
+                f"nodes.{n}.params.keep_all=true"
+                for n, node in definition.nodes.items()
+                if hasattr(node.params, "keep_all")
+            ),
+        )
     show = observer(sys.stderr, quiet)
     with show:
         result = run_pipeline(file, out=folder, allow=allow, overrides=overrides, seed=seed, on_event=show)

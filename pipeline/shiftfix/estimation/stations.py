@@ -61,6 +61,11 @@ def earth_frame(
     mjd = float(orientation.array("mjd_utc_1")[-1])
     notes = []
     last = 40587.0 + (epoch_tai_ns * 1e-9 + span_s[1] - 37.0) / 86400.0
+    if orientation.leap_seconds_hold_until_mjd and last > orientation.leap_seconds_hold_until_mjd:
+        notes.append(
+            f"leap seconds are known until MJD {orientation.leap_seconds_hold_until_mjd:.0f} only; UTC after it may be a second off: "
+            "update the package astropy-iers-data"
+        )
     if last > orientation.last_observed_mjd:
         notes.append(
             f"Earth orientation is predicted, not observed, after MJD {orientation.last_observed_mjd:.0f} (table ends at {mjd:.0f})"

@@ -40,17 +40,6 @@ def _day(year: int, month: int, day: int) -> int:
     return int((np.datetime64(f"{year:04d}-{month:02d}-01") - np.datetime64("1970-01-01")).astype(int)) + day - 1
 
 
-def leap_table_expires() -> str:
-    """Return the date until which the leap-second table is known to hold, as ISO text."""
-    return erfa.leap_seconds.expires.date().isoformat() if hasattr(erfa.leap_seconds, "expires") else ""
-
-
-def leap_table_expired(tai_ns: int) -> bool:
-    """Return whether an epoch lies past the date until which the leap-second table is known to hold."""
-    expires = leap_table_expires()
-    return bool(expires) and tai_ns > tai_ns_from_calendar(int(expires[:4]), int(expires[5:7]), int(expires[8:10]), 0, 0, 0)
-
-
 def tai_minus_utc_s(day: np.ndarray | int) -> np.ndarray:
     """Return TAI - UTC [s] on UTC days since 1970; raises ValueError before 1972."""
     days, seconds, _ = _leaps()

@@ -52,6 +52,13 @@ def bundled_earth_orientation() -> EarthOrientation:
     first_days = np.array([erfa.cal2jd(int(r["year"]), int(r["month"]), 1)[1] for r in leaps])
     tai_minus_utc = leaps["tai_utc"][np.clip(np.searchsorted(first_days, mjd, side="right") - 1, 0, None)]
     observed = np.isfinite(column(155, 165))[good] | (block[good, 57] == b"I")
+    with open(astropy_iers_data.IERS_LEAP_SECOND_FILE, encoding="ascii") as handle:
+        words = next(line for line in handle if "expires on" in line).split("expires on")[1].split()
+    month = (
+        ("January February March April May June July August September October November December")
+        .split()
+        .index(words[1])
+    )
     return EarthOrientation(
         rows=pd.DataFrame(
             {
@@ -64,5 +71,6 @@ def bundled_earth_orientation() -> EarthOrientation:
             }
         ),
         name=f"IERS finals2000A of astropy-iers-data {metadata.version('astropy-iers-data')}",
+        leap_seconds_hold_until_mjd=erfa.cal2jd(int(words[2]), month + 1, int(words[0]))[1],
         last_observed_mjd=float(mjd[observed].max()) if observed.any() else float(mjd[0]),
     )

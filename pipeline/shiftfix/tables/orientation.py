@@ -18,6 +18,8 @@ class EarthOrientation(Table):
         Name and version of the table, for provenance.
     last_observed_mjd : float
         Last day with observed, not predicted, values.
+    leap_seconds_hold_until_mjd : float
+        Day until which no leap second beyond the known ones can come; 0 when not stated.
     """
 
     columns: ClassVar[tuple[Column, ...]] = (
@@ -30,3 +32,4 @@ class EarthOrientation(Table):
     )
     name: str = ""
     last_observed_mjd: float = 0.0
+    leap_seconds_hold_until_mjd: float = 0.0
