@@ -6,6 +6,7 @@ import pytest
 
 from shiftfix.physics.timescales import (
     NS,
+    tai_minus_utc_s,
     tai_ns_from_calendar,
     tai_ns_from_gps,
     tai_ns_from_texts,
