@@ -52,7 +52,7 @@ def _listed(title: str, texts: Iterable[str]) -> list[str]:
 
 
 def _length(value: float) -> str:
-    return f"{value / 1e3:.4g} km" if abs(value) >= 1e4 else f"{value:.3g} m"
+    return f"{value / 1e3:.4g} km" if abs(value) >= 1e4 else f"{value:.{4 if abs(value) >= 1e3 else 3}g} m"
 
 
 def _position(solution: Solution) -> list[str]:

@@ -12,7 +12,7 @@ _WIDTH = 80
 def _size(value: float, unit: str = "m") -> str:
     if unit == "m" and abs(value) >= 1e4:
         return f"{value / 1e3:.4g} km"
-    return f"{value:.3g} {unit}"
+    return f"{value:.{4 if abs(value) >= 1e3 else 3}g} {unit}"
 
 
 def _wrapped(label: str, text: str, lines: int) -> list[str]:
@@ -48,7 +48,8 @@ def summary_lines(document: Mapping[str, Any]) -> list[str]:
                 f"  1 sigma {_size(total['position_m'])} and {_size(total['velocity_m_s'], 'm/s')} (root sum square of "
                 f"components)"
             )
-        lines.append(f"speed     {speed:.4g} m/s in {document['frame']}")
+        if speed > 0:
+            lines.append(f"speed     {speed:.4g} m/s in {document['frame']}")
         rest, sigma = document["rest_frequency_hz"], document["rest_frequency_sigma_hz"]
         lines.append(f"rest frequency  {rest:.4f} Hz +/- {sigma:.2g} Hz (1 sigma)")
         lines += _wrapped("  datum: ", document["frequency_datum"], 2)

@@ -74,6 +74,11 @@ class BoundMotion:
         d_position, d_velocity = path.partials(times)
         if self.frame == "GCRS":
             return position[0], velocity[0], np.vstack([d_position[0], d_velocity[0]])
+        if not any(name.endswith("_m_s") for name in self.motion.parameter_names):
+            # At rest on the ground: exactly zero, not what two rotations leave of it.
+            rotation = self.earth.rotation(times)[0]
+            at_rest = np.vstack([rotation.T @ d_position[0], np.zeros_like(d_position[0])])
+            return rotation.T @ position[0], np.zeros(3), at_rest
         rotation = self.earth.rotation(times)[0]
         fixed_position, fixed_velocity = self.earth.to_itrs(times, position, velocity)
         # The Earth-fixed velocity is R^T (v - omega x r): its partials follow from those of r and v with the spin

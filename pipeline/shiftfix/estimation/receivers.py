@@ -51,6 +51,19 @@ class GroundPath:
         return np.zeros(shape), np.zeros(shape)
 
 
+@dataclass(frozen=True)
+class ShiftedPath:
+    """Path displaced by a constant vector [m], GCRS axes: the error of a moving receiver's ephemeris."""
+
+    path: Path
+    delta_m: np.ndarray
+
+    def states(self, times_s: np.ndarray) -> States:
+        """Return the displaced states."""
+        position, velocity, acceleration = self.path.states(times_s)
+        return States(position + self.delta_m, velocity, acceleration)
+
+
 @dataclass(frozen=True, eq=False)
 class Receiver:
     """One receiving station of an arc.
@@ -67,7 +80,8 @@ class Receiver:
     latitude_rad : float
         Geodetic latitude for the mapping function.
     shifted : callable, optional
-        `shifted(delta_itrs_m) -> Path`: the same station at displaced coordinates, for the coordinate error.
+        `shifted(delta_m) -> Path`: the same station at displaced coordinates, for the coordinate error (ITRS axes on the
+        ground, GCRS axes for a mover).
     offset, offset_sigma, drift_per_s, drift_sigma_per_s : float
         Prior of the fractional frequency offset of its reference; sigma inf means unknown.
     time_bias_s, time_sigma_s : float

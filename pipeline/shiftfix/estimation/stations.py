@@ -12,7 +12,7 @@ from typing import Any
 import numpy as np
 
 from shiftfix.errors import CoverageError, InputError, Problem
-from shiftfix.estimation.receivers import Receiver, ground_receiver
+from shiftfix.estimation.receivers import Receiver, ShiftedPath, ground_receiver
 from shiftfix.physics.frames import EarthFrame
 from shiftfix.physics.motion.bodies import SunMoon
 from shiftfix.physics.motion.sampled import SampledPath
@@ -146,9 +146,8 @@ def station_receiver(stations: Any, row: int, frame: EarthFrame, epoch_tai_ns: i
         position_sigma_m=value("position_sigma_m"),
     )
     if name in stations.ephemerides:
-        return Receiver(
-            name, sampled_path(stations.ephemerides[name], name, frame, epoch_tai_ns), moving=True, **priors
-        )
+        path = sampled_path(stations.ephemerides[name], name, frame, epoch_tai_ns)
+        return Receiver(name, path, moving=True, shifted=lambda delta: ShiftedPath(path, delta), **priors)
     position = np.array([value("x_m"), value("y_m"), value("z_m")])
     velocity = np.array([value("vx_m_s"), value("vy_m_s"), value("vz_m_s")])
     if velocity.any():
