@@ -11,17 +11,14 @@ from typing import Any
 _EXPORTS: dict[str, str] = {
     # errors
     "CoverageError": "shiftfix.errors",
-    "DataWarning": "shiftfix.errors",
     "DefinitionError": "shiftfix.errors",
     "InputError": "shiftfix.errors",
     "NodeError": "shiftfix.errors",
-    "ObservabilityError": "shiftfix.errors",
     "PluginError": "shiftfix.errors",
     "Problem": "shiftfix.errors",
     "RunCancelled": "shiftfix.errors",
     "SchemaError": "shiftfix.errors",
     "ShiftfixError": "shiftfix.errors",
-    "TimeScaleError": "shiftfix.errors",
     "VerificationError": "shiftfix.errors",
     # tables
     "Alternative": "shiftfix.tables.solution",

@@ -78,16 +78,6 @@ class CoverageError(InputError):
     """Epochs lie outside the span of a table (Earth orientation, ephemeris)."""
 
 
-class TimeScaleError(InputError):
-    """A time is not expressed, or not expressible, in the scale that is needed."""
-
-
-class ObservabilityError(ShiftfixError, ArithmeticError):
-    """The data do not determine the parameters; names the directions that are not seen."""
-
-    exit_code = 5
-
-
 class PluginError(ShiftfixError, ImportError):
     """A plugin cannot be loaded or breaks the contract; names its distribution and version."""
 
@@ -110,7 +100,3 @@ class RunCancelled(ShiftfixError):
     """The run was cancelled; what was finished stands in the run folder."""
 
     exit_code = 130
-
-
-class DataWarning(UserWarning):
-    """Something in the data deserves a look; one a table, with counts."""

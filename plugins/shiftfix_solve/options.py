@@ -138,7 +138,25 @@ class OrbitOptions:
 
 
 @dataclass(frozen=True)
-class SurfaceOptions:
+class SearchRegion:
+    """Where a search begins: options of every motion near the ground."""
+
+    centre_latitude: float | None = param(
+        "centre of the search region", default=None, unit="deg", minimum=-90.0, maximum=90.0
+    )
+    centre_longitude: float | None = param(
+        "centre of the search region", default=None, unit="deg", minimum=-360.0, maximum=360.0
+    )
+    radius: float | None = param(
+        "radius of the search region; default: from the stations, or what all receivers see",
+        default=None,
+        unit="m",
+        minimum=1.0,
+    )
+
+
+@dataclass(frozen=True)
+class SurfaceOptions(SearchRegion):
     """Options of the motion `surface`."""
 
     height: Quantity = param(
@@ -151,20 +169,11 @@ class SurfaceOptions:
     )
     legs: int = param("number of legs of constant course and speed", default=1, minimum=1, maximum=6)
     turn_times: tuple[str, ...] = param("UTC times of the turns; empty: estimated", default=())
-    centre_latitude: float | None = param(
-        "centre of the search region", default=None, unit="deg", minimum=-90.0, maximum=90.0
-    )
-    centre_longitude: float | None = param(
-        "centre of the search region", default=None, unit="deg", minimum=-360.0, maximum=360.0
-    )
-    radius: float | None = param(
-        "radius of the search region; default from the stations", default=None, unit="m", minimum=1.0
-    )
     speed_sigma: float = param("prior 1-sigma of each velocity component", default=30.0, unit="m/s", minimum=1e-3)
 
 
 @dataclass(frozen=True)
-class FixedOptions:
+class FixedOptions(SearchRegion):
     """Options of the motion `fixed`."""
 
     height: Quantity = param(
@@ -175,19 +184,10 @@ class FixedOptions:
         maximum=9000.0,
         sigma=True,
     )
-    centre_latitude: float | None = param(
-        "centre of the search region", default=None, unit="deg", minimum=-90.0, maximum=90.0
-    )
-    centre_longitude: float | None = param(
-        "centre of the search region", default=None, unit="deg", minimum=-360.0, maximum=360.0
-    )
-    radius: float | None = param(
-        "radius of the search region; default: what all receivers see", default=None, unit="m", minimum=1.0
-    )
 
 
 @dataclass(frozen=True)
-class PolynomialOptions:
+class PolynomialOptions(SearchRegion):
     """Options of the motion `polynomial`."""
 
     degree: int = param("1: constant velocity, 2: constant acceleration", default=1, minimum=1, maximum=2)
@@ -198,15 +198,6 @@ class PolynomialOptions:
         minimum=-500.0,
         maximum=1e5,
         sigma=True,
-    )
-    centre_latitude: float | None = param(
-        "centre of the search region", default=None, unit="deg", minimum=-90.0, maximum=90.0
-    )
-    centre_longitude: float | None = param(
-        "centre of the search region", default=None, unit="deg", minimum=-360.0, maximum=360.0
-    )
-    radius: float | None = param(
-        "radius of the search region; default from the stations", default=None, unit="m", minimum=1.0
     )
     speed_sigma: float = param("prior 1-sigma of each velocity component", default=400.0, unit="m/s", minimum=1e-3)
     acceleration_sigma: float = param(

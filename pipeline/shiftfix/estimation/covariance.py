@@ -6,8 +6,6 @@ import numpy as np
 from scipy.stats import chi2
 
 from shiftfix.estimation.fit import Fit
-from shiftfix.estimation.forward import ForwardModel
-from shiftfix.estimation.receivers import Receiver
 
 
 def ellipse(covariance_2x2: np.ndarray, level: float) -> dict[str, float]:
@@ -50,9 +48,3 @@ def describe_direction(vector: np.ndarray, axes: np.ndarray, names: tuple[str, s
 def nearest_distance(fit: Fit) -> float:
     """Return the shortest distance between emitter and receivers over the arc [m]."""
     return float(fit.forward.links(fit.path).distance_m.min())
-
-
-def receivers_with_rows(forward: ForwardModel) -> list[Receiver]:
-    """Return the receivers that have at least one row."""
-    present = np.unique(forward.rows.station)
-    return [forward.receivers[s] for s in present]

@@ -36,13 +36,6 @@ class Whitener:
             return rows * (scale if rows.ndim == 1 else scale[:, None])
         return solve_banded((1, 0), self.factor, rows, check_finite=False)
 
-    @property
-    def log_determinant(self) -> float:
-        """Natural logarithm of the determinant of the covariance."""
-        if self.factor is None:
-            return float(np.log(self.variance).sum())
-        return float(2.0 * np.log(self.factor[0]).sum())
-
 
 def whitener(
     sigma: np.ndarray,

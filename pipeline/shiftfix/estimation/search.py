@@ -100,16 +100,6 @@ def search_data(
     return SearchData(thin.middle_s, thin.station, position, velocity, thin.z, sigma, eliminate, tuple(receivers))
 
 
-def score(data: SearchData, states: BatchStates, candidates: np.ndarray, chunk: int = 1500) -> np.ndarray:
-    """Return the sum of squared residuals of each candidate, shape (B,); inf where it cannot be evaluated."""
-    out = np.empty(len(candidates))
-    for k in range(0, len(candidates), chunk):
-        with np.errstate(all="ignore"):
-            r = data.residuals(*states(candidates[k : k + chunk], data.times_s))
-            out[k : k + chunk] = np.einsum("bn,bn->b", r, r)
-    return np.where(np.isfinite(out), out, np.inf)
-
-
 def refine(
     data: SearchData,
     states: BatchStates,
