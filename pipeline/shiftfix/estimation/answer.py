@@ -162,7 +162,13 @@ def solve_arc(
     findings = _findings(fit, widened, chances)
     others = tuple(fits[1:])
     if not fit.converged and not unseen:
+        ratio = fit.singular_values[-1] / max(fit.singular_values[0], 1e-300)
         verdict, text = "not converged", "the iteration did not reach a minimum; see the findings"
+        if ratio < 1e-3:
+            text = (
+                f"the iteration did not reach a minimum: the cost falls along a curved valley (weakest over strongest "
+                f"direction {ratio:.0e}); more stations, a longer arc or a prior would close it"
+            )
     elif unseen or not fit.rank_full:
         words = "; ".join(unseen) or "one combination of the parameters"
         verdict, text = "not observable", f"the data do not determine the emitter: not seen is {words}"

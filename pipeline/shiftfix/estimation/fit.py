@@ -43,7 +43,7 @@ class FitSettings:
     media: Media = field(default_factory=Media)
     gates: Gates = field(default_factory=Gates)
     priors: tuple = ()
-    max_iterations: int = 40
+    max_iterations: int = 60
     check_cancelled: Callable[[], None] = lambda: None
 
 
