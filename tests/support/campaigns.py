@@ -33,6 +33,7 @@ from shiftfix.api import (
 )
 
 EPOCH = "2026-03-01T12:00:00Z"
+SIX_PLACES = [(-40.8, -26.6), (-41.4, -25.6), (-40.6, -25.4), (-41.5, -26.5), (-41.0, -25.1), (-40.5, -26.1)]
 
 
 def make_earth(span=2600.0):
@@ -240,9 +241,8 @@ def aircraft() -> Campaign:
     """Aircraft of 230 m/s at 11 km over six stations, 130 MHz, 0.5 Hz, references 1e-9, height known to 200 m."""
     earth, frame, _ = make_earth(1200.0)
     plane = worldline.Straight(earth, -41.0, -26.0, 11000.0, 200.0, 110.0, 0.0)
-    places = [(-40.8, -26.6), (-41.4, -25.6), (-40.6, -25.4), (-41.5, -26.5), (-41.0, -25.1), (-40.5, -26.1)]
     receivers, clean, station, middle = [], [], [], []
-    for k, (latitude, longitude) in enumerate(places):
+    for k, (latitude, longitude) in enumerate(SIX_PLACES):
         ground = worldline.Ground(earth, latitude, longitude, 30.0)
         t = np.arange(-148.0, 150.0, 4.0)
         clean.append(worldline.log_received(plane, ground, t - 1, t + 1))
@@ -262,9 +262,42 @@ def aircraft() -> Campaign:
     )
 
 
+def turning_aircraft() -> Campaign:
+    """The same flight with a constant acceleration of 0.3 m/s2 that is estimated, prior 3 m/s2 a component."""
+    earth, frame, _ = make_earth(1200.0)
+    plane = worldline.Straight(earth, -41.0, -26.0, 11000.0, 200.0, 110.0, 0.0)
+    plane.acceleration = np.array([0.2, -0.1, 0.2])
+    straight = plane.itrs
+    plane.itrs = lambda t: straight(t) + 0.5 * np.atleast_1d(t)[:, None] ** 2 * plane.acceleration
+    campaign = aircraft()
+    rows = campaign.rows
+    clean = np.empty(len(rows))
+    for s, (latitude, longitude) in enumerate(SIX_PLACES):
+        mine = rows.station == s
+        ground = worldline.Ground(earth, latitude, longitude, 30.0)
+        clean[mine] = worldline.log_received(plane, ground, rows.start_s[mine], rows.stop_s[mine])
+    motion = PolynomialMotion(frame, degree=2)
+    priors = tuple(ValuePrior(k, 0.0, 3.0) for k in (6, 7, 8))
+    bound = BoundMotion("polynomial", motion, None, motion.states_batch, "ITRS", frame, priors)
+    truth = np.concatenate([straight(np.zeros(1))[0], plane.v, plane.acceleration])
+    return Campaign(
+        "turning aircraft",
+        bound,
+        truth,
+        campaign.receivers,
+        rows,
+        clean,
+        ClockModels(),
+        1e-9,
+        (None, 11000.0, 200.0),
+        3,
+    )
+
+
 SCENES = {
     "leo pass": leo_pass,
     "vessel with a turn": vessel_with_turn,
     "beacon from orbit": beacon_from_orbit,
     "aircraft": aircraft,
+    "turning aircraft": turning_aircraft,
 }
