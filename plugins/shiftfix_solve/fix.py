@@ -33,12 +33,14 @@ def fix(inputs, params, context):
         troposphere=params.troposphere == "standard",
         epoch_tai_ns=starts.epoch_tai_ns,
     )
-    bound = bind_motion(starts.motion, starts.motion_params, context, arc)
+    motion = params.motion or starts.motion
+    options = starts.motion_params if motion == starts.motion else {}
+    bound = bind_motion(motion, options, context, arc)
     if tuple(bound.motion.parameter_names) != tuple(starts.parameter_names):
         raise InputError(
             Problem(
                 f"node {context.node}",
-                "the starting states belong to another form of the motion",
+                f"the starting states are of the motion {starts.motion!r} and do not fit {motion!r}",
                 found=", ".join(starts.parameter_names),
                 allowed=", ".join(bound.motion.parameter_names),
             )

@@ -35,6 +35,7 @@ class FixParams:
     """Parameters of `solve.fix`."""
 
     emitter: str = param("emitter to solve for; needed when the table holds several", default="")
+    motion: str = param("motion to fit; empty takes that of the starting states", default="")
     station_model: str = param(
         "station oscillators: constant or drift; random_walk; piecewise: one offset an arc; calibrated: from `offsets` alone",
         default="constant",

@@ -19,7 +19,7 @@ def pack(answer, arc, bound, settings, starts, context) -> Solution:
     fields = dict(
         verdict=answer.verdict,
         verdict_text=answer.text,
-        motion=starts.motion,
+        motion=bound.name,
         epoch_tai_ns=arc.epoch_tai_ns,
         epoch_utc=utc_text(arc.epoch_tai_ns),
         frame=bound.frame,
