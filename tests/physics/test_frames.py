@@ -160,3 +160,16 @@ def test_angle_runs_on_through_a_leap_second(table):
     x = frame.to_gcrs(times, PLACES[1]).position
     step = np.linalg.norm(np.diff(x, axis=0), axis=1)
     assert np.abs(step - step[0]).max() < 1e-5 and 465.0 < step[0] < 465.2
+
+
+def test_times_far_outside_the_span_are_refused(table):
+    """Ephemeris nodes two hours past the arc are turned to 0.1 mm; a day past it the splines no longer hold."""
+    short = frame_of("2024-03-01T00:00:00Z", (-600.0, 600.0), table)
+    wide = frame_of("2024-03-01T00:00:00Z", (-90000.0, 90000.0), table)
+    near, far = np.array([-7800.0, 7800.0]), np.array([0.0, 86000.0])
+    assert np.abs(short.rotation(near) - wide.rotation(near)).max() * 6.4e6 < 1e-4
+    assert np.abs(short.rotation(far) - wide.rotation(far)).max() * 6.4e6 < 6e-2
+    for times in ([0.0, 87100.0], [-87100.0], [np.nan]):
+        with pytest.raises(ValueError, match="outside this frame, which holds from -87000 to 87000 s"):
+            short.rotation(np.array(times))
+    assert short.rotation(np.zeros(0)).shape == (0, 3, 3)

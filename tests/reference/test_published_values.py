@@ -5,8 +5,9 @@ import pytest
 from straight_paths import UniformPaths
 
 from shiftfix.estimation.calibration import periodic_relativity_s
+from shiftfix.estimation.considered import PHASE_ADVANCE_M3_S2
 from shiftfix.estimation.covariance import ellipse
-from shiftfix.physics import constants, doppler, geodesy, kepler, timescales
+from shiftfix.physics import constants, doppler, geodesy, kepler, timescales, troposphere
 from shiftfix.physics.constants import GM_EARTH_M3_S2, L_G, SPEED_OF_LIGHT_M_S, W0_M2_S2
 from shiftfix.physics.frames import EarthFrame
 from shiftfix.physics.gravity import earth_potential
@@ -15,7 +16,6 @@ from shiftfix.physics.motion.forces import Forces
 from shiftfix.physics.motion.harmonics import EGM2008_COEFFICIENTS
 from shiftfix.physics.motion.orbit import OrbitMotion
 from shiftfix.physics.motion.states import States
-from shiftfix.physics.troposphere import zenith_hydrostatic_delay
 from shiftfix.tables.bundled_orientation import bundled_earth_orientation
 
 C = SPEED_OF_LIGHT_M_S
@@ -190,6 +190,24 @@ def test_eccentricity_amplitudes(a, e, amplitude_ns):
     assert term[0] * 1e9 == pytest.approx(amplitude_ns, rel=2e-4)
 
 
+def test_clock_swing_of_an_eccentric_satellite():
+    """Galileo 5 and 6 (e = 0.162, a = 27977.6 km): 380.7 ns (computed; "about 370 ns", Delva et al. 2018), by the proper
+    time that is used for averages, minute by minute from perigee; the flattening adds 2e-4 of it."""
+    a, e = 27977.6e3, 0.162
+    rate = np.sqrt(GM_EARTH_M3_S2 / a**3)
+    times = np.append(np.arange(0.0, 2 * np.pi / rate, 60.0), 2 * np.pi / rate)
+    anomaly = rate * times
+    for _ in range(60):
+        anomaly = rate * times + e * np.sin(anomaly)
+    states = orbit_states(a, e, anomaly, GM_EARTH_M3_S2)
+    pull = -GM_EARTH_M3_S2 * states.position / np.linalg.norm(states.position, axis=1)[:, None] ** 3
+    index = np.arange(times.size)
+    lost = np.append(0.0, np.cumsum(doppler.time_lost(states._replace(acceleration=pull), index[:-1], index[1:], np.diff(times))))
+    swing = lost[-1] * times / times[-1] - lost
+    assert np.ptp(swing) / 2 * 1e9 == pytest.approx(380.7, rel=5e-4)
+    assert swing == pytest.approx(-4.442807e-10 * e * np.sqrt(a) * np.sin(anomaly), abs=2e-10)
+
+
 class Turning:
     """Stations on the equator that turn with the Earth, row by row."""
 
@@ -308,6 +326,38 @@ def test_terrestrial_to_celestial():
     assert states.velocity[0] / 1e3 == pytest.approx([-4.743220157, 0.790536497, 5.533755727], abs=2e-8)
 
 
+def fixed_frame(tt_mjd, tt_minus_ut1_s):
+    """Frame at one instant of TT, with a given UT1, the pole at the origin and no celestial offsets."""
+    epoch = round((tt_mjd - 40587.0) * 86400) * 10**9 - 32_184_000_000
+    mjd = np.floor(timescales.utc_mjd(epoch)) + np.arange(-4.0, 6.0)
+    zero = np.zeros(mjd.size)
+    return EarthFrame.from_orientation(epoch, (-10.0, 10.0), mjd, zero + 32.184 - tt_minus_ut1_s, zero, zero, zero, zero)
+
+
+def test_celestial_pole_and_sidereal_time():
+    """SOFA test suite, xys06a and gst06a at MJD 53736 (TT, and UT1 for the latter): the pole as our rotation has it, and the
+    turn from the true equinox (of ERFA's matrix). 3e-12: splines and rounding of the day, 2e-5 m on the ground."""
+    import erfa
+
+    turn = fixed_frame(53736.0, 0.0).rotation(np.zeros(1))[0]
+    assert turn[:2, 2] == pytest.approx([5.791308482835292617e-4, 4.020580099454020310e-5], abs=3e-12)
+    of_date = erfa.pnm06a(2400000.5, 53736.0) @ turn
+    # The TIO locator, -47 microarcseconds a century, stands between the prime meridian and the origin of longitudes.
+    locator = erfa.sp00(2400000.5, 53736.0)
+    assert np.arctan2(of_date[1, 0], of_date[0, 0]) - locator == pytest.approx(1.754166137675019159, abs=3e-12)
+
+
+def test_earth_rotation_angle():
+    """SOFA test suite, era00 at UT1 MJD 54388: 0.4022837240028158 rad, from our rotation and the origin of its own X, Y, s."""
+    import erfa
+
+    frame = fixed_frame(54388.0, 0.0)
+    turn = frame.rotation(np.zeros(1))[0]
+    from_celestial = erfa.c2ixys(*erfa.xys06a(2400000.5, 54388.0)) @ turn
+    angle = np.arctan2(from_celestial[1, 0], from_celestial[0, 0]) - erfa.sp00(2400000.5, 54388.0)
+    assert angle == pytest.approx(0.4022837240028158, abs=3e-12)
+
+
 @pytest.mark.parametrize(
     ("mjd", "xp", "yp", "ut1_minus_utc", "tai_minus_utc"),
     [(53101, -0.140857, 0.333539, -0.4399552, 32), (57754, 0.080549, 0.263128, 0.5912870, 37)],
@@ -368,7 +418,28 @@ def test_cartesian_to_geodetic():
 
 def test_zenith_delay():
     """IERS Conventions 2010, ch. 9 (formula; computed): 1013.25 hPa, 45 deg, 0 m: 2.30697 m, five decimals."""
-    assert zenith_hydrostatic_delay(101325.0, np.radians(45.0), 0.0) == pytest.approx(2.30697, abs=5e-6)
+    assert troposphere.zenith_hydrostatic_delay(101325.0, np.radians(45.0), 0.0) == pytest.approx(2.30697, abs=5e-6)
+
+
+def test_mapping_against_the_global_function():
+    """IERS Conventions 2010, software GMF, header: 3.425245519339138678 and 3.449589116182419257 at 16.75 deg.
+
+    Niell's functions are another model of the same air: they differ by 3e-5 and 4e-6 here (0.1 mm of delay).
+    """
+    elevation, latitude, day_of_year = np.pi / 2 - 1.278564131, 0.6708665767, 55055 - 54831
+    hydrostatic = troposphere.niell_hydrostatic(elevation, latitude, 844.715, day_of_year)
+    assert hydrostatic == pytest.approx(3.425245519339138678, rel=5e-5)
+    assert troposphere.niell_wet(elevation, latitude) == pytest.approx(3.449589116182419257, rel=1e-5)
+
+
+@pytest.mark.parametrize(("frequency_mhz", "path_m", "bound_m"), [(1575.42, 0.1624, 5e-5), (400.0, 2.519, 5e-4)])
+def test_one_electron_content_unit(frequency_mhz, path_m, bound_m):
+    """1 TECU (1e16 electrons a square metre), all printed digits; e**2/(8 pi**2 eps0 m_e) with CODATA's constants."""
+    from scipy import constants as codata
+
+    assert PHASE_ADVANCE_M3_S2 * 1e16 / (frequency_mhz * 1e6) ** 2 == pytest.approx(path_m, abs=bound_m)
+    expected = codata.e**2 / (8 * np.pi**2 * codata.epsilon_0 * codata.m_e)
+    assert PHASE_ADVANCE_M3_S2 == pytest.approx(expected, rel=1e-7)
 
 
 def test_error_ellipse():
