@@ -215,6 +215,23 @@ def test_mid_interval_value_is_off_by_curvature_over_24():
     assert bias == pytest.approx(curvature * interval**2 / 24, rel=2e-3)
 
 
+@pytest.mark.parametrize("ends", [(FAR, STATION), (STATION, FAR)], ids=["down", "up"])
+def test_instantaneous_ratio_is_the_limit_of_the_mean(ends):
+    """Counts of 8 to 1 s extrapolated to none: 1e-16, where the light's delay is worth 3e-15 (ten times that in a pass)."""
+    means = [np.expm1(mean_of(interval, *ends)) for interval in (8.0, 4.0, 2.0, 1.0)]
+    for power in (4.0, 16.0, 64.0):
+        means = [(power * b - a) / (power - 1.0) for a, b in zip(means, means[1:], strict=False)]
+    receiver = ends[1].states(np.zeros(1))
+    link = one_way(np.zeros(1), receiver.position, ends[0])
+    potentials = {
+        "receiver_potential": earth_potential(receiver.position),
+        "emitter_potential": earth_potential(link.emitter.position),
+    }
+    with_delay, without = (doppler.log_ratio(link, receiver, light_delay=d, **potentials)[0] for d in (True, False))
+    assert abs(with_delay - np.log1p(means[0])) <= 1e-16
+    assert abs(with_delay - without) > 3e-15
+
+
 # Partial derivatives
 
 

@@ -112,6 +112,7 @@ class ForwardModel:
             self.receiver,
             receiver_potential=self.receiver_potential,
             emitter_potential=gravity.earth_potential(link.emitter.position),
+            light_delay=True,
         )
 
     def _mean(self, link: lighttime.Link) -> np.ndarray:
