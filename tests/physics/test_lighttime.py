@@ -76,7 +76,7 @@ def test_size_of_the_earths_delay(elevation_deg, expected_mm):
     assert change[0] * C * 1e3 == pytest.approx(expected_mm, abs=0.01)
 
 
-def test_faster_than_light_is_refused_and_paths_through_the_centre_stay_finite():
+def test_what_has_no_light_time_is_refused_and_paths_through_the_centre_stay_finite():
     class Running:
         def states(self, times):
             states = UniformPaths([[1e7, 0, 0]], [[-1.5 * C, 0, 0]]).states(times)
@@ -84,5 +84,8 @@ def test_faster_than_light_is_refused_and_paths_through_the_centre_stay_finite()
 
     with pytest.raises(ValueError, match="not slower than light"):
         one_way([0.0], np.array([[0.0, 1e3, 0.0]]), Running())
+    for emitter, receiver in (([np.nan, 0, 0], [0.0, 1e7, 0.0]), ([1e7, 0, 0], [0.0, np.inf, 0.0])):
+        with pytest.raises(ValueError, match="not finite"), np.errstate(invalid="ignore"):
+            one_way([0.0], np.array([receiver]), UniformPaths([emitter], np.zeros((1, 3))))
     through = one_way([0.0], np.array([[6.4e6, 0.0, 0.0]]), UniformPaths([[-7e6, 0.0, 0.0]], np.zeros((1, 3))))
     assert np.isfinite(through.light_time_s).all()

@@ -36,6 +36,11 @@ def one_way(receive_times_s: np.ndarray, receiver_position_m: np.ndarray, emitte
     shapiro : bool
         Whether the Earth's relativistic delay (6 to 19 mm) is added (Shapiro 1964; IERS Conventions 2010, ch. 11).
 
+    Raises
+    ------
+    ValueError
+        When a position is not finite or the emitter outruns light.
+
     Notes
     -----
     Newton iteration on the emission time; it converges for every speed below that of light. The last correction, below
@@ -55,8 +60,11 @@ def one_way(receive_times_s: np.ndarray, receiver_position_m: np.ndarray, emitte
         # F(L) = L - |x_R - x_T(t - L)|/c, dF/dL = 1 - n.v/c
         change = (target - light_time) / (1.0 - approach / c)
         light_time = light_time + change
-        if np.abs(change).max(initial=0.0) < 1e-9:
+        largest = np.abs(change).max(initial=0.0)
+        if largest < 1e-9:
             break
+        if not np.isfinite(largest):
+            raise ValueError("the light time is not finite: a position of the emitter or of a receiver is not")
     else:
         raise ValueError("the light time does not converge: the emitter's path is not slower than light")
     # The states are those before the last correction: position follows with the velocity; velocity stays (1e-8 m/s).
