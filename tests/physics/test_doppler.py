@@ -198,6 +198,20 @@ def test_partials_of_the_mean_ratio_of_fast_emitters():
         assert ours[:, k] == pytest.approx((moved[0] - moved[1]) / 2e-5, abs=1e-6 * np.abs(ours).max())
 
 
+def test_proper_time_of_a_minute_is_that_of_its_seconds():
+    """A flattened Earth, e = 0.1, a whole turn: ends of a minute against sixty seconds, 1e-17 of the minute and rounding."""
+    span, a, e = (0.0, 7300.0), 7.4e6, 0.1
+    frame = EarthFrame.without_orientation(EPOCH, span)
+    forces = Forces(degree=2, sun=False, moon=False, relativity=False, radiation=False, drag=False)
+    speed = np.sqrt(GM_EARTH_M3_S2 / a * (1 + e) / (1 - e))
+    path = OrbitMotion(EPOCH, span, frame, forces).at(np.array([a * (1 - e), 0, 0, 0, 0.4 * speed, np.sqrt(0.84) * speed]))
+    states, k = path.states(np.arange(0.0, 6601.0)), np.arange(6601)
+    seconds = doppler.time_lost(states, k[:-1], k[1:], np.ones(6600)).reshape(110, 60).sum(axis=1)
+    minutes = doppler.time_lost(states, k[:-60:60], k[60::60], np.full(110, 60.0))
+    assert np.abs(minutes - seconds).max() / 60.0 < 3e-17
+    assert np.ptp(minutes) / 60.0 > 1e-11
+
+
 def test_mid_interval_value_is_off_by_curvature_over_24():
     """Mean minus value at mid-interval is f'' T**2/24 (Taylor), to the next order in T."""
     interval, h = 8.0, 4.0

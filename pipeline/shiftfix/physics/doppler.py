@@ -11,7 +11,7 @@ import numpy as np
 
 from shiftfix.physics import doubled
 from shiftfix.physics.constants import GM_EARTH_M3_S2, SPEED_OF_LIGHT_M_S
-from shiftfix.physics.gravity import earth_potential, earth_potential_gradient
+from shiftfix.physics.gravity import earth_potential, earth_potential_gradient, earth_potential_rate
 from shiftfix.physics.lighttime import Link
 from shiftfix.physics.motion.states import States
 
@@ -153,7 +153,8 @@ def clock_deficit(states: States) -> tuple[np.ndarray, np.ndarray]:
     square = np.einsum("ni,ni->n", states.velocity, states.velocity) / C2
     short = 2.0 * w * (1.0 - w) + (1.0 + 2.0 * w) * square
     rate = np.sqrt(1.0 - short)
-    slope = np.einsum("ni,ni->n", states.velocity, earth_potential_gradient(states.position) + states.acceleration)
+    slope = earth_potential_rate(states.position, states.velocity)
+    slope = slope + np.einsum("ni,ni->n", states.velocity, states.acceleration)
     # 1 - sqrt(1 - q) = q/(1 + sqrt(1 - q)), without cancellation
     return short / (1.0 + rate), slope / (C2 * rate)
 
@@ -161,8 +162,8 @@ def clock_deficit(states: States) -> tuple[np.ndarray, np.ndarray]:
 def time_lost(states: States, first: np.ndarray, last: np.ndarray, duration_s: np.ndarray) -> np.ndarray:
     """Return coordinate time minus proper time [s] of a body between its states `first` and `last`, shape (rows,).
 
-    Values and slopes at both ends (Euler-Maclaurin): the neglected fourth-order term is below 1e-19 s for 60 s in a
-    low orbit of eccentricity 0.1.
+    Values and slopes at both ends (Euler-Maclaurin). The fourth-order term that is left out, over the duration, is 1e-17
+    for 60 s and 5e-15 for 300 s in a low orbit of eccentricity 0.1, 1e-13 for 300 s through a perigee of eccentricity 0.7.
     """
     deficit, rate = clock_deficit(states)
     return duration_s * (0.5 * (deficit[first] + deficit[last]) + duration_s * (rate[first] - rate[last]) / 12.0)

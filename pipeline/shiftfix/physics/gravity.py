@@ -20,11 +20,21 @@ def earth_potential(position_m: np.ndarray) -> np.ndarray:
     return GM_EARTH_M3_S2 / r * (1.0 + shape)
 
 
+def earth_potential_rate(position_m: np.ndarray, velocity_m_s: np.ndarray) -> np.ndarray:
+    """Return dw/dt [m2/s3] along a motion, flattening included; positions and velocities (..., 3)."""
+    x, v = np.asarray(position_m, float), np.asarray(velocity_m_s, float)
+    square = np.einsum("...i,...i->...", x, x)
+    rising = np.einsum("...i,...i->...", x, v) / square
+    flat = 0.5 * J2_1 * EARTH_RADIUS_M**2 / square
+    height = x[..., 2] ** 2 / square
+    tilting = x[..., 2] * v[..., 2] / square - height * rising
+    return -GM_EARTH_M3_S2 / np.sqrt(square) * (rising * (1.0 + 3.0 * flat * (1.0 - 3.0 * height)) + 6.0 * flat * tilting)
+
+
 def earth_potential_gradient(position_m: np.ndarray) -> np.ndarray:
     """Return the gradient of the monopole part of w [m/s2], (..., 3).
 
-    Used in partial derivatives and in the end correction of averaged clock rates, where the J2 part (1e-3 of it) is
-    below 1e-8 of the whole partial derivative.
+    Used in partial derivatives, where the J2 part (1e-3 of it) is below 1e-8 of the whole.
     """
     x = np.asarray(position_m, float)
     square = np.einsum("...i,...i->...", x, x)
