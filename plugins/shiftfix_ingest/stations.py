@@ -8,8 +8,9 @@ from pathlib import Path
 import pandas as pd
 
 from shiftfix.api import EmitterTable, InputError, Source, StationTable, TomlSyntaxError, param
+from shiftfix_ingest.book_reader import BookReader
 from shiftfix_ingest.source_files import binary_problem, open_sources
-from shiftfix_ingest.station_book import BookReader
+from shiftfix_ingest.station_book import station_row
 
 
 @dataclass(frozen=True)
@@ -52,7 +53,7 @@ def read_stations(inputs, params: BookParams, context) -> dict:
     rows, moving = [], {}
     seen: dict[str, list[tuple[tuple, dict]]] = {}
     for path, name, body in book.entries("stations"):
-        row = book.station(path, name, body)
+        row = station_row(book, path, name, body)
         if row is None:
             continue
         track = row.pop("track", None)
@@ -68,9 +69,15 @@ def read_stations(inputs, params: BookParams, context) -> dict:
                 continue
             moving[name] = tracks[track]
         for other_path, other in seen.setdefault(name, []):
-            if (
-                row["valid_from_tai_ns"] <= other["valid_until_tai_ns"]
-                and other["valid_from_tai_ns"] <= row["valid_until_tai_ns"]
+            if track is not None or name in moving:
+                book.add(
+                    path,
+                    f"station id {name!r} is used at {book.where(*other_path)} too, and one of the two moves",
+                    remedy="give the moving station its own id",
+                )
+            elif (
+                row["valid_from_tai_ns"] < other["valid_until_tai_ns"]
+                and other["valid_from_tai_ns"] < row["valid_until_tai_ns"]
             ):
                 book.add(
                     path,
@@ -81,7 +88,14 @@ def read_stations(inputs, params: BookParams, context) -> dict:
         rows.append(row)
     if book.problems:
         raise InputError(book.problems)
-    return {"stations": StationTable(rows=pd.DataFrame(rows), ephemerides=moving, sources=(source,))}
+    if book.remarks:
+        context.logger.warning(
+            "%s: no clock class and no time_bias with 1-sigma for %s: their time tags are taken as exact",
+            source.name,
+            ", ".join(book.remarks),
+        )
+    table = pd.DataFrame(rows).fillna({"chain_sign_1": 0.0, "chain_constant_hz": 0.0})
+    return {"stations": StationTable(rows=table, ephemerides=moving, sources=(source,))}
 
 
 def read_emitters(inputs, params: BookParams, context) -> dict:
@@ -104,14 +118,23 @@ def read_emitters(inputs, params: BookParams, context) -> dict:
         "rest_frequency",
         "note",
     )
-    rows = []
+    rows: list[dict] = []
     for path, name, body in book.entries("emitters"):
         book.known(path, body, fields)
+        if name in [r["emitter_id"] for r in rows]:
+            book.add(path, f"emitter id {name!r} occurs twice", remedy="give each emitter its own id")
         value, sigma = book.quantity(path, body, "rest_frequency", "Hz", sigma=True)
         if "rest_frequency" not in body:
             book.add(path, "rest_frequency is missing", allowed='rest_frequency = "98.1 MHz +/- 1 mHz"')
+        elif value is not None and not 3e3 <= value <= 3e11:
+            book.add(
+                (*path, "rest_frequency"),
+                "not a radio frequency",
+                found=repr(body["rest_frequency"]),
+                allowed="3 kHz to 300 GHz",
+            )
         row = {"emitter_id": name, "rest_frequency_hz": value, "rest_frequency_sigma_hz": sigma or 0.0}
-        if any(f in body for f in ("latitude", "x")):
+        if any(f in body for f in ("latitude", "longitude", "x", "y", "z")):
             position = book.place(path, body)
             if position is None:
                 continue
@@ -120,9 +143,3 @@ def read_emitters(inputs, params: BookParams, context) -> dict:
     if book.problems:
         raise InputError(book.problems)
     return {"emitters": EmitterTable(rows=pd.DataFrame(rows), sources=(source,))}
-
-
-def recognise(path, first_bytes: bytes) -> bool:
-    """Return whether the head has a stations table."""
-    text = first_bytes.decode("utf-8", "replace")
-    return path.suffix == ".toml" and any(mark in text for mark in ("[stations.", "[[stations]]"))

@@ -67,6 +67,7 @@ def text_nodes() -> tuple[NodeSpec, ...]:
             name="delimited",
             summary="delimited text with declared columns, units and time scale",
             function=_delimited,
+            inputs={"stations": Port(StationTable, "station book with the receiver chains of tones", optional=True)},
             outputs={"frequencies": Port(FrequencyTable, "received frequencies")},
             params=DelimitedParams,
         ),

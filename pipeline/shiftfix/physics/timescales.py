@@ -18,6 +18,7 @@ NS = 1_000_000_000
 _DAY_NS = 86400 * NS
 _GPS_EPOCH_TAI_NS = 3657 * _DAY_NS + TAI_MINUS_GPS_S * NS  # 1980-01-06T00:00:00 GPS
 SCALES = ("UTC", "TAI", "TT", "GPS")
+_YEARS = (1900, 2200)  # int64 nanoseconds since 1970 reach from 1677 to 2262
 _OFFSET_NS = {"TAI": 0, "TT": -round(TT_MINUS_TAI_S * 1000) * 1_000_000, "GPS": TAI_MINUS_GPS_S * NS}
 
 _ISO = re.compile(
@@ -55,6 +56,8 @@ def tai_ns_from_calendar(
     """Return nanoseconds of TAI of a calendar time in `scale` (UTC, TAI, TT or GPS); second 60 only where UTC has one."""
     if scale not in SCALES:
         raise ValueError(f"unknown time scale {scale!r}; allowed: {', '.join(SCALES)}")
+    if not _YEARS[0] <= year <= _YEARS[1]:
+        raise ValueError(f"year {year} is out of range; allowed: {_YEARS[0]} to {_YEARS[1]}")
     if not 1 <= month <= 12 or not 1 <= day <= _month_length(year, month):
         raise ValueError(f"no such date: {year:04d}-{month:02d}-{day:02d}")
     whole = int(np.floor(second))
@@ -83,6 +86,20 @@ def tai_ns_from_gps(week: int, seconds: float) -> int:
     """Return nanoseconds of TAI of a full GPS week number and seconds of week."""
     whole = int(np.floor(seconds))
     return _GPS_EPOCH_TAI_NS + (int(week) * 604800 + whole) * NS + int(round((seconds - whole) * NS))
+
+
+def tai_ns_from_posix(posix_ns: np.ndarray) -> np.ndarray:
+    """Return nanoseconds of TAI of POSIX times [ns], which count UTC days of 86400 s since 1970.
+
+    A leap second has no POSIX time of its own: what was logged in it falls on the second after or before it.
+
+    Raises
+    ------
+    ValueError
+        Before 1972.
+    """
+    posix_ns = np.asarray(posix_ns, dtype=np.int64)
+    return posix_ns + tai_minus_utc_s(posix_ns // _DAY_NS) * NS
 
 
 def tai_ns_from_utc(text: str) -> int:
@@ -189,6 +206,7 @@ def _fixed_width(texts: np.ndarray, scale: str, require_z: bool) -> tuple[np.nda
         zulu |= z
         ended |= blank | z
     ok &= figures | ~fraction
+    ok &= (year >= _YEARS[0]) & (year <= _YEARS[1])
     ok &= (month >= 1) & (month <= 12) & (day >= 1) & (hour < 24) & (minute < 60) & (second < 60)
     ok &= zulu if scale == "UTC" and require_z else np.ones_like(ok)
     if scale != "UTC":

@@ -51,6 +51,8 @@ class StationTable(Table):
         Column("clock_class", "text", "class of the time tags", default="unknown"),
         Column("time_bias_s", "float", "prior of the time-tag bias", default=0.0),
         Column("time_sigma_s", "float", "its 1-sigma", default=0.0, minimum=0.0),
+        Column("chain_sign_1", "float", "receiver chain: sky = sign x tone + constant; 0 without one", default=0.0),
+        Column("chain_constant_hz", "float", "constant of the receiver chain", default=0.0),
         Column("valid_from_tai_ns", "int", "first time of validity", default=-(2**62)),
         Column("valid_until_tai_ns", "int", "last time of validity", default=2**62),
     )

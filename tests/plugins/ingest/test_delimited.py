@@ -161,7 +161,7 @@ BAD = {
         "log.csv:10",
         "wrong number of fields",
     ),
-    "decimal comma": (dict(lines=[*LINES, '2026-03-01T13:00:00Z,"158300000,5"']), "log.csv:10", "wrong number of fields"),
+    "decimal comma": (dict(lines=[*LINES, '2026-03-01T13:00:00Z,"158300000,5"']), "log.csv:10", "has a comma; say decimal"),
     "unknown column": (dict(head="t,freq"), "log.csv:1", "no column 'f'"),
     "Z in another scale": (dict(scale="TAI"), "log.csv:2", "the declared time scale is TAI"),
 }
