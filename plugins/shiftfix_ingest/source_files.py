@@ -17,6 +17,15 @@ from shiftfix.api import Problem
 
 _GZIP = b"\x1f\x8b"
 _LIMIT_BYTES = 2_000_000_000  # of one unpacked file: a day of 10 Hz RINEX is below 1e9
+_LIMIT_RATIO = 200  # of unpacked to packed beyond the first 50 MB: logs stay below 50, a bomb reaches 1000
+_RATIO_FROM_BYTES = 50_000_000
+_ARCHIVES = {
+    b"PK\x03\x04": "zip",
+    b"BZh": "bzip2",
+    b"\xfd7zXZ\x00": "xz",
+    b"7z\xbc\xaf": "7-Zip",
+    b"\x28\xb5\x2f\xfd": "zstd",
+}
 
 
 @dataclass(frozen=True)
@@ -86,21 +95,37 @@ def open_sources(
         seen[digest] = name
         if raw.startswith(_GZIP):
             try:
-                with gzip.GzipFile(fileobj=io.BytesIO(raw)) as packed:
-                    raw = packed.read(_LIMIT_BYTES + 1)
+                raw, problem = _unpacked(name, raw)
             except (EOFError, OSError, zlib.error) as error:
-                problems.append(
-                    Problem(name, "the gzip file is truncated or damaged", found=str(error), remedy="fetch it again")
+                problem = Problem(
+                    name, "the gzip file is truncated or damaged", found=str(error), remedy="fetch it again"
                 )
-                continue
-            if len(raw) > _LIMIT_BYTES:
-                problems.append(Problem(name, "too large when unpacked", allowed=f"{_LIMIT_BYTES} bytes"))
+            if problem:
+                problems.append(problem)
                 continue
             if not raw:
                 problems.append(Problem(name, "the packed file is empty", found="0 bytes"))
                 continue
         files.append(SourceFile(Path(path), name, digest, raw))
     return files, problems, notes
+
+
+def _unpacked(name: str, packed: bytes) -> tuple[bytes, Problem | None]:
+    """Return the content of a gzip file, or a problem when it grows beyond what a log can be."""
+    parts, size = [], 0
+    with gzip.GzipFile(fileobj=io.BytesIO(packed)) as stream:
+        while part := stream.read(8_000_000):
+            parts.append(part)
+            size += len(part)
+            if size > _LIMIT_BYTES or (size > _RATIO_FROM_BYTES and size > _LIMIT_RATIO * len(packed)):
+                return b"", Problem(
+                    name,
+                    "the packed file grows too large",
+                    found=f"over {size} bytes from {len(packed)}",
+                    allowed=f"{_LIMIT_BYTES} bytes, and {_LIMIT_RATIO} times its size",
+                    remedy="unpack it and look at it first",
+                )
+    return b"".join(parts), None
 
 
 def repeat_problems(notes: Iterable[str], on_repeat: str) -> list[Problem]:
@@ -121,6 +146,15 @@ def repeat_problems(notes: Iterable[str], on_repeat: str) -> list[Problem]:
 def binary_problem(source: SourceFile, wanted: str) -> Problem | None:
     """Return a problem when a file that must be text is binary: a NUL, or over 5 % control characters at its start."""
     head = source.data[:4096]
+    for mark, kind in _ARCHIVES.items():
+        if head.startswith(mark):
+            return Problem(
+                f"{source.name}:1",
+                f"the file is a {kind} archive",
+                found=repr(head[:8]),
+                allowed=wanted,
+                remedy="unpack it",
+            )
     control = sum(byte < 32 and byte not in b"\t\r\n\f\x1a" for byte in head)
     if b"\0" in head or control > 0.05 * len(head):
         return Problem(f"{source.name}:1", "the file is binary", found=repr(head[:16]), allowed=wanted)
