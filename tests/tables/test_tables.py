@@ -79,10 +79,21 @@ def test_same_rows_twice_change_nothing_and_are_noted_once():
     merged = merge_frequency_tables((one, one))
     assert len(merged) == 3 and len(merged.sources) == 1
     assert len(merged.notes) == 1 and "3 rows occur twice" in merged.notes[0]
-    assert len(merged.rejects) == 3
+    assert merged.rejects == () and merged.sources == one.sources
     assert list(merged.array("time_tai_ns")) == [10, 10, 20]
     other = FrequencyTable(rows=rows(received_frequency_hz=[1e8 + 3, 1e8 + 4, 1e8 + 5]))
     assert len(merge_frequency_tables((one, other))) == 6
+
+
+def test_overlapping_logs_are_used_once_and_counted():
+    """Another file that repeats two rows, under another nominal frequency, loses them: read = accepted + rejected."""
+    one = FrequencyTable(rows=rows(), sources=(Source("f", "0" * 64, 3, 3, 0),))
+    second = rows(source=["g"] * 3, time_tai_ns=[10, 20, 30], nominal_frequency_hz=[1.01e8] * 3, row_number=[7, 8, 9])
+    other = FrequencyTable(rows=second, sources=(Source("g", "1" * 64, 4, 3, 1),))
+    merged = merge_frequency_tables((one, other))
+    assert len(merged) == 4 and list(merged.array("source")) == ["f", "f", "f", "g"]
+    assert [(r.source, r.row_number) for r in merged.rejects] == [("g", 7), ("g", 8)]
+    assert [(s.rows_read, s.rows_accepted, s.rows_rejected) for s in merged.sources] == [(3, 3, 0), (4, 1, 3)]
 
 
 def test_toml_places_and_syntax_errors():

@@ -2,8 +2,9 @@
 
 from __future__ import annotations
 
+from collections import Counter
 from collections.abc import Sequence
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from typing import ClassVar
 
 import numpy as np
@@ -81,31 +82,37 @@ class FrequencyTable(Table):
 def merge_frequency_tables(tables: Sequence[FrequencyTable]) -> FrequencyTable:
     """Return one table ordered by time and station; a file or row that comes twice is kept once and noted.
 
-    Two rows are the same when station, emitter, time, interval and received frequency agree exactly.
+    Two rows are the same when station, emitter, time, interval and received frequency agree exactly. A repeated row that
+    stands in another place than the kept one becomes a reject, and its file counts it so; the same row of the same file
+    read twice is only noted.
     """
     tables = tuple(tables)
     rows = pd.concat([t.rows for t in tables], ignore_index=True) if len(tables) > 1 else tables[0].rows
     for column in FrequencyTable.columns:
         if column.name in rows and column.kind == "text" and len(tables) > 1:
             rows[column.name] = rows[column.name].astype(object)
-    keys = ["station_id", "emitter_id", "time_tai_ns", "interval_s", "received_frequency_hz", "nominal_frequency_hz"]
+    keys = ["station_id", "emitter_id", "time_tai_ns", "interval_s", "received_frequency_hz"]
     repeated = rows.duplicated(keys, keep="first").to_numpy()
     notes = [n for t in tables for n in t.notes]
-    rejects = [r for t in tables for r in t.rejects]
-    if repeated.any():
-        names = ", ".join(sorted(set(rows.loc[repeated, "source"])))
-        notes.append(f"{int(repeated.sum())} rows occur twice and are used once (from {names or 'unnamed source'})")
-        dropped = rows[repeated]
-        rejects += [
-            Reject(str(s), int(n), "the same observation occurs twice")
-            for s, n in zip(dropped["source"], dropped["row_number"], strict=True)
-        ]
-        rows = rows[~repeated]
-    order = np.lexsort((rows["emitter_id"].to_numpy(str), rows["station_id"].to_numpy(str), rows["time_tai_ns"]))
+    rejects = list(dict.fromkeys(r for t in tables for r in t.rejects))
     sources: dict[tuple[str, str], Source] = {}
     for table in tables:
         for source in table.sources:
             sources.setdefault((source.name, source.sha256), source)
+    if repeated.any():
+        names = ", ".join(sorted(set(rows.loc[repeated, "source"])))
+        notes.append(f"{int(repeated.sum())} rows occur twice and are used once (from {names or 'unnamed source'})")
+        used = set(zip(rows.loc[~repeated, "source"], rows.loc[~repeated, "row_number"], strict=True))
+        dropped = rows.loc[repeated, ["source", "row_number"]].drop_duplicates()
+        elsewhere = [(str(s), int(n)) for s, n in dropped.to_numpy() if (s, n) not in used]
+        rejects += [Reject(s, n, "the same observation occurs twice") for s, n in elsewhere]
+        lost = Counter(s for s, _ in elsewhere)
+        sources = {
+            key: replace(s, rows_accepted=s.rows_accepted - lost[s.name], rows_rejected=s.rows_rejected + lost[s.name])
+            for key, s in sources.items()
+        }
+        rows = rows[~repeated]
+    order = np.lexsort((rows["emitter_id"].to_numpy(str), rows["station_id"].to_numpy(str), rows["time_tai_ns"]))
     return FrequencyTable(
         rows=rows.iloc[order],
         sources=tuple(sources.values()),
