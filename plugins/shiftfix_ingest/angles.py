@@ -9,7 +9,9 @@ from shiftfix.api import parse_quantity
 AXES = {"latitude": "NS", "longitude": "EW"}
 _N = r"(\d+(?:\.\d*)?)"
 _ANGLE = re.compile(
-    rf"([+-]?)\s*{_N}\s*(?:°|deg|d)?(?:[\s:]*{_N}\s*(?:'|′|m)?(?:[\s:]*{_N}\s*(?:\"|″|''|s)?)?)?\s*([NSEW]?)"
+    # The parts need a mark or a blank between them, or `38.91 m` would be 38.9 deg and 1 minute.
+    rf"([+-]?)\s*{_N}(?:(?:\s*(?:°|deg|d|:)\s*|\s+){_N}(?:(?:\s*(?:'|′|m|:)\s*|\s+){_N}\s*(?:\"|″|''|s)?|\s*(?:'|′|m)?))?"
+    r"\s*(?:°|deg)?\s*([NSEW]?)"
 )
 
 

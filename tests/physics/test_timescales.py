@@ -9,6 +9,7 @@ from shiftfix.physics.timescales import (
     tai_minus_utc_s,
     tai_ns_from_calendar,
     tai_ns_from_gps,
+    tai_ns_from_posix,
     tai_ns_from_texts,
     tai_ns_from_utc,
     tt_jd,
@@ -199,3 +200,23 @@ def test_before_1972_is_refused():
     for call in (lambda: tai_minus_utc_s(729), lambda: utc_text(0), lambda: utc_mjd(0)):
         with pytest.raises(ValueError, match="before 1972"):
             call()
+
+
+def test_posix_counts_utc_days_of_86400_seconds():
+    """1483228800 is 2017-01-01T00:00:00Z, one POSIX second after 23:59:59Z but two seconds later (POSIX.1, 4.16)."""
+    out = tai_ns_from_posix(np.array([1483228799, 1483228800, 63072000]) * NS)
+    assert out[0] == tai_ns_from_utc("2016-12-31T23:59:59Z") and out[1] - out[0] == 2 * NS
+    assert out[2] == tai_ns_from_utc("1972-01-01T00:00:00Z")
+    with pytest.raises(ValueError, match="before 1972"):
+        tai_ns_from_posix(np.array([63071999 * NS]))
+
+
+@pytest.mark.parametrize("scale", ["UTC", "TAI"])
+def test_years_beyond_the_reach_of_nanoseconds_are_refused(scale):
+    """int64 nanoseconds since 1970 end in 2262; a year 9999 must not come back as another century."""
+    mark = "Z" if scale == "UTC" else ""
+    texts = [f"{year}-03-01T12:00:00{mark}" for year in (2200, 2201, 9999, 1899)]
+    values, problems = tai_ns_from_texts(texts, scale)
+    assert values[0] == tai_ns_from_calendar(2200, 3, 1, 12, 0, 0, scale) and (values[1:] == 0).all()
+    assert [index for index, _ in problems] == [1, 2, 3]
+    assert all("out of range; allowed: 1900 to 2200" in message for _, message in problems)
