@@ -53,6 +53,9 @@ def convert(
     time_ns, time_reasons = _times(table, where, params)
     for k, reason in time_reasons.items():
         reasons.texts[k] = reason
+    reasons.add(
+        _cut_off(table), "the last line has no line end and is shorter than every other row: the file looks truncated"
+    )
     text = {role: _text(table, where, role, params) for role in ("station", "emitter", "arc", "phase_arc")}
     reasons.add(text["station"] == "", "station is empty")
     values = _values(table, where, params, reasons)
@@ -69,13 +72,6 @@ def convert(
         off, ratio = plausibility.off_scale(frequency, nominal)
         against = "nominal frequency" if np.isfinite(nominal).any() else "median of the file"
         reasons.add(off, lambda k: f"frequency {frequency[k]:.10g} Hz is {ratio[k]:.3g} times the {against}")
-    if count > 3 and not table.ended:
-        lengths = [len(table.lines[n - 1]) for n in table.numbers]
-        cut = table.numbers[-1] == len(table.lines) and lengths[-1] <= min(lengths[:-1]) - _CUT
-        reasons.add(
-            (np.arange(count) == count - 1) & cut,
-            "the last line has no line end and is shorter than every other row: the file looks truncated",
-        )
     extra = {n: _extra(table, where[f"extra:{n}"], n, params, reasons) for n in params.extra}
     rejects = _rejects(table, reasons)
     refusal = _too_many(table, rejects, params)
@@ -107,6 +103,15 @@ def convert(
         rows[name] = column[good]
     problems, notes = plausibility.spacing_findings(here, rows)
     return (None if problems else rows), rejects, problems, notes
+
+
+def _cut_off(table: TextTable) -> np.ndarray:
+    """Return a mask of the last row, where it is the last line, without line end and clearly shorter than the others."""
+    out = np.zeros(len(table.numbers), bool)
+    if len(out) > 3 and not table.ended and table.numbers[-1] == len(table.lines):
+        *others, last = (len(table.lines[n - 1]) for n in table.numbers)
+        out[-1] = last <= min(others) - _CUT
+    return out
 
 
 def _times(table: TextTable, where: dict[str, int], params: DelimitedParams) -> tuple[np.ndarray, dict[int, str]]:

@@ -1,14 +1,13 @@
-"""Delimited text, station books and positions: what is read, and every bad input refused at once with place and remedy."""
+"""Delimited text: what is read, what is noted, and every bad input refused at once with place and remedy."""
 
 from __future__ import annotations
 
 import gzip
-import itertools
 
 import numpy as np
 import pytest
 
-from shiftfix.api import run_pipeline
+from shiftfix.api import InputError, run_pipeline, utc_text
 
 HEAD = """shiftfix = 1
 [nodes.log]
@@ -161,7 +160,11 @@ BAD = {
         "log.csv:10",
         "wrong number of fields",
     ),
-    "decimal comma": (dict(lines=[*LINES, '2026-03-01T13:00:00Z,"158300000,5"']), "log.csv:10", "has a comma; say decimal"),
+    "decimal comma": (
+        dict(lines=[*LINES, '2026-03-01T13:00:00Z,"158300000,5"']),
+        "log.csv:10",
+        "has a comma; say decimal",
+    ),
     "unknown column": (dict(head="t,freq"), "log.csv:1", "no column 'f'"),
     "Z in another scale": (dict(scale="TAI"), "log.csv:2", "the declared time scale is TAI"),
 }
@@ -220,30 +223,295 @@ def test_bad_rows_can_be_counted_instead(tmp_path):
     assert all(r.reason and r.text for r in table.rejects)
 
 
-@pytest.mark.parametrize(
-    ("sides", "inverted"), [(s, k) for s in itertools.product(("upper", "lower"), repeat=2) for k in (0, 1, 2)]
-)
-def test_receiver_chains_unwind_to_the_antenna(tmp_path, sides, inverted):
-    """Twelve chains of two converters and a tone: sign and sum follow from mixing forwards (common practice)."""
-    sky = 158300000.0 + 100.0 * np.arange(6)
-    los = (
-        (148000000.0, 10295000.0)
-        if inverted == 0
-        else (168600000.0, 10298000.0)
-        if inverted == 1
-        else (158000000.0, 298500.0)
-    )
-    signal = sky
-    for side, lo in zip(sides, los, strict=True):
-        signal = signal - lo if side == "upper" else lo - signal
-    lines = [f"2026-03-01T12:{k:02d}:00Z,{float(v)!r}" for k, v in enumerate(signal)]
-    stages = ", ".join(f'{{ lo = "{lo} Hz", side = "{side}" }}' for side, lo in zip(sides, los, strict=True))
-    result = run(tmp_path, lines=lines, extra=f'params.frequency_kind = "audio"\nparams.chain = [{stages}]\n')
+WIDE = """params.columns = {{ time = "t", frequency = "f"{more} }}
+params.units = {{ frequency = "Hz"{units} }}
+"""
+
+
+def run_wide(folder, head, rows, more, units="", extra="", drop=()):
+    """Run with further columns declared."""
+    (folder / "log.csv").write_text("\n".join([head, *rows]) + "\n")
+    text = HEAD.format(files="log.csv", unit="Hz", scale="UTC", tag="middle")
+    lines = [x for x in text.splitlines() if not x.startswith(("params.columns", "params.units", *drop))]
+    declared = WIDE.format(more=f", {more}" if more else "", units=units)
+    (folder / "p.toml").write_text("\n".join(lines) + "\n" + declared + extra)
+    return run_pipeline(folder / "p.toml")
+
+
+def test_empty_fields_take_the_value_of_the_parameter_or_none(tmp_path):
+    rows = [
+        f"{x},{s},{c},{rx}"
+        for x, s, c, rx in zip(
+            LINES, "2,,2,,2,,2,".split(","), "33,,,,33,,,".split(","), "A,,A,,A,,A,".split(","), strict=True
+        )
+    ]
+    more = 'sigma = "s", cn0 = "c", station = "rx"'
+    result = run_wide(tmp_path, "t,f,s,c,rx", rows, more, ', sigma = "Hz"')
     assert result.error is None, result.error
-    assert np.allclose(result.tables["log.frequencies"].array("received_frequency_hz"), sky, atol=1e-6)
+    table = result.tables["log.frequencies"]
+    assert table.array("received_frequency_sigma_hz").tolist() == [2.0, 1.0] * 4
+    assert table.array("station_id").tolist() == ["A", "ORREL"] * 4
+    assert np.isfinite(table.array("cn0_db_hz")).tolist() == [True, False, False, False] * 2
+    result = run_wide(tmp_path, "t,f,s,c,rx", rows, more, ', sigma = "Hz"', drop=("params.station", "params.sigma"))
+    assert result.exit_code == 4
+    assert "log.csv:3: station is empty" in str(result.error) and "4 of 8" not in str(result.error)
+    only = [x.replace(",A", ",") if k == 2 else x for k, x in enumerate(rows)]
+    assert "log.csv:4: sigma" not in str(run_wide(tmp_path, "t,f,s,c,rx", only, more, ', sigma = "Hz"').error)
 
 
-def test_a_million_rows_is_a_matter_for_the_benchmark():
-    from pathlib import Path
+def test_sigma_that_is_empty_without_a_default(tmp_path):
+    rows = [f"{x},{'' if k == 5 else 2}" for k, x in enumerate(LINES)]
+    result = run_wide(tmp_path, "t,f,s", rows, 'sigma = "s"', ', sigma = "Hz"', drop=("params.sigma",))
+    assert result.exit_code == 4 and "log.csv:7: sigma is empty" in str(result.error)
 
-    assert (Path(__file__).parents[2] / "benchmarks" / "bench_delimited.py").is_file()
+
+def test_every_number_is_converted_by_its_own_unit(tmp_path):
+    rows = [f"2026-03-01T12:{k:02d}:00.500Z,{158300000.25 + k!r},2500,10000,33,-7,158.3" for k in range(8)]
+    more = 'sigma = "s", interval = "i", cn0 = "c", rate = "r", nominal = "n"'
+    units = ', sigma = "mHz", interval = "ms", cn0 = "dBHz", rate = "kHz/s", nominal = "MHz"'
+    drop = ("params.interval", "params.sigma", "params.nominal_frequency")
+    result = run_wide(tmp_path, "t,f,s,i,c,r,n", rows, more, units, drop=drop)
+    assert result.error is None, result.error
+    table = result.tables["log.frequencies"]
+    for column, value in (
+        ("received_frequency_sigma_hz", 2.5),
+        ("interval_s", 10.0),
+        ("cn0_db_hz", 33.0),
+        ("frequency_rate_hz_s", -7000.0),
+        ("nominal_frequency_hz", 158.3e6),
+    ):
+        assert np.allclose(table.array(column), value, rtol=1e-15), column
+
+
+def test_offsets_are_added_to_the_nominal_of_their_row(tmp_path):
+    rows = [f"2026-03-01T12:{k:02d}:00Z,{k + 0.5},{158.3 + 0.025 * (k % 2)!r}" for k in range(8)]
+    extra = 'params.frequency_kind = "offset"\n'
+    result = run_wide(
+        tmp_path, "t,f,n", rows, 'nominal = "n"', ', nominal = "MHz"', extra, drop=("params.nominal_frequency",)
+    )
+    found = result.tables["log.frequencies"].array("received_frequency_hz")
+    assert np.allclose(found, [158.3e6 + 25e3 * (k % 2) + k + 0.5 for k in range(8)], rtol=0.0, atol=1e-7)
+
+
+def test_nominal_frequency_that_is_not_given_is_the_median_of_the_emitter(tmp_path):
+    rows = [f"2026-03-01T12:{k:02d}:00Z,{158300000 + k},A" for k in range(5)]
+    rows += [f"2026-03-01T12:{k:02d}:00Z,{98100000 + k},B" for k in range(5)]
+    result = run_wide(tmp_path, "t,f,e", rows, 'emitter = "e"', drop=("params.nominal_frequency",))
+    table = result.tables["log.frequencies"]
+    assert table.array("nominal_frequency_hz").tolist() == [158300002.0] * 5 + [98100002.0] * 5
+
+
+def test_further_columns_pass_or_their_rows_do_not(tmp_path):
+    rows = [f"{x},{280.5 + k}" for k, x in enumerate(LINES)]
+    extra = 'params.extra = { temperature_k = "T" }\n'
+    result = run_wide(tmp_path, "t,f,T", rows, "", extra=extra)
+    assert result.tables["log.frequencies"].array("temperature_k")[3] == 283.5
+    rows[2] = f"{LINES[2]},warm"
+    result = run_wide(tmp_path, "t,f,T", rows, "", extra=extra)
+    assert "log.csv:4: temperature_k is not a finite number: 'warm'" in str(result.error)
+
+
+def test_files_without_header_and_with_a_preamble(tmp_path):
+    plain = run(tmp_path).tables["log.frequencies"].rows.drop(columns=["row_number"])
+    (tmp_path / "log.csv").write_text("VRX receiver\nserial; 12\n" + "\n".join(LINES) + "\n")
+    text = HEAD.format(files="log.csv", unit="Hz", scale="UTC", tag="middle")
+    text = text.replace('time = "t", frequency = "f"', "time = 1, frequency = 2")
+    (tmp_path / "p.toml").write_text(text + "params.header = false\nparams.skip = 2\n")
+    table = run_pipeline(tmp_path / "p.toml").tables["log.frequencies"]
+    assert table.array("row_number")[0] == 3
+    assert table.rows.drop(columns=["row_number"]).equals(plain)
+
+
+def test_the_leap_second_reaches_the_table(tmp_path):
+    lines = [f"2016-12-31T23:59:{s}Z,158300000" for s in ("59.5", "60.5")] + ["2017-01-01T00:00:00.5Z,158300000"]
+    times = run(tmp_path, lines=lines).tables["log.frequencies"].array("time_tai_ns")
+    assert np.diff(times).tolist() == [10**9, 10**9]
+    assert utc_text(int(times[1])) == "2016-12-31T23:59:60.500000Z"
+
+
+def test_one_row_in_another_unit_is_found(tmp_path):
+    lines = [*LINES, "2026-03-01T13:00:00Z,158300.009"]
+    result = run(tmp_path, lines=lines)
+    assert "log.csv:10: frequency 158300.009 Hz is 0.001 times the nominal frequency" in str(result.error)
+    text = (tmp_path / "p.toml").read_text().replace('params.nominal_frequency = "158.3 MHz"\n', "")
+    (tmp_path / "p.toml").write_text(text)
+    found = str(run_pipeline(tmp_path / "p.toml").error)
+    assert "log.csv:10: frequency 158300.009 Hz is 0.001 times the median of the file" in found
+
+
+def test_overlapping_files_are_used_once_and_counted(tmp_path):
+    (tmp_path / "a.csv").write_text("t,f\n" + "\n".join(LINES[:5]) + "\n")
+    (tmp_path / "b.csv").write_text("t,f\n" + "\n".join(LINES[3:]) + "\n")
+    (tmp_path / "p.toml").write_text(HEAD.format(files="?.csv", unit="Hz", scale="UTC", tag="middle"))
+    table = run_pipeline(tmp_path / "p.toml").tables["log.frequencies"]
+    assert len(table) == 8
+    assert [(s.rows_read, s.rows_accepted, s.rows_rejected) for s in table.sources] == [(5, 5, 0), (5, 3, 2)]
+    assert [(r.source, r.row_number, r.reason) for r in table.rejects] == [
+        ("b.csv", 2, "the same observation stands at a.csv:5"),
+        ("b.csv", 3, "the same observation stands at a.csv:6"),
+    ]
+    assert table.notes == ("2 rows occur twice and are used once (from b.csv)",)
+
+
+def test_two_receivers_under_one_name_are_noted(tmp_path):
+    lines = [*LINES, *(x.replace(".25", ".75") for x in LINES[:3])]
+    notes = run(tmp_path, lines=lines).tables["log.frequencies"].notes
+    assert len(notes) == 1 and "6 rows share station, emitter and time" in notes[0] and "log.csv:2" in notes[0]
+
+
+def test_overlapping_counts_are_noted_and_absurd_ones_refused(tmp_path):
+    lines = [f"2026-03-01T12:00:{k:02d}Z,{158300000 + k}" for k in range(30)]
+    notes = run(tmp_path, lines=lines).tables["log.frequencies"].notes
+    assert len(notes) == 1 and "intervals of 10 s, rows every 1 s" in notes[0]
+    assert run(tmp_path, lines=lines[::10]).tables["log.frequencies"].notes == ()
+    text = (tmp_path / "p.toml").read_text().replace('"10 s"', '"1000 s"')
+    (tmp_path / "log.csv").write_text("t,f\n" + "\n".join(lines) + "\n")
+    (tmp_path / "p.toml").write_text(text)
+    assert "far longer than the time between rows" in str(run_pipeline(tmp_path / "p.toml").error)
+
+
+def test_a_last_line_that_is_cut_off_is_not_taken(tmp_path):
+    whole = ("t,f\n" + "\n".join(LINES)).encode()
+    assert run(tmp_path, lines=whole).error is None
+    result = run(tmp_path, lines=whole[:-3])
+    assert "log.csv:9" in str(result.error) and "the file looks truncated" in str(result.error)
+    assert run(tmp_path, lines=whole[:-3] + b"\n").error is None
+
+
+@pytest.mark.parametrize("mode", ["refuse", "reject"])
+def test_half_of_the_rows_may_be_rejected_and_no_more(tmp_path, mode):
+    extra = f'params.on_bad_row = "{mode}"\n'
+    bad = [f"2026-03-01T13:{k:02d}:00Z,none" for k in range(9)]
+    half = run(tmp_path, lines=[*LINES, *bad[:8]], extra=extra)
+    assert (half.exit_code == 4) == (mode == "refuse")
+    more = run(tmp_path, lines=[*LINES, *bad], extra=extra)
+    assert more.exit_code == 4
+    assert "9 of 17 rows are unusable (9 x frequency is not a finite number)" in str(more.error)
+
+
+def test_only_the_first_rows_are_listed_and_the_rest_counted(tmp_path):
+    lines = [f"2026-03-01T12:{k:02d}:00Z,{158300000 + k}" for k in range(60)]
+    lines += [f"2026-03-01T13:{k:02d}:00Z,-1" for k in range(27)]
+    problems = run(tmp_path, lines=lines).error.problems
+    assert len(problems) == 21 and problems[0].where == "log.csv:62"
+    assert "7 more unusable rows" in str(problems[-1]) and 'on_bad_row = "reject"' in problems[-1].remedy
+
+
+def test_content_of_one_file_is_reported_beside_the_absence_of_another(tmp_path):
+    (tmp_path / "log.csv").write_text("t,f\n" + "\n".join([*LINES, "2026-03-01T13:00:00Z,nan"]) + "\n")
+    text = HEAD.format(files="x", unit="Hz", scale="UTC", tag="middle").replace('"x"', '["log.csv", "none.csv"]')
+    (tmp_path / "p.toml").write_text(text)
+    found = str(run_pipeline(tmp_path / "p.toml").error)
+    assert "none.csv: no such file" in found and "log.csv:10: frequency is not a finite number: 'nan'" in found
+
+
+def test_any_damage_gives_a_table_or_a_refusal(tmp_path, context):
+    """Random damage to a log with on_bad_row = reject: read = accepted + rejected, or one InputError; nothing else."""
+    from shiftfix_ingest.delimited import read_delimited
+    from shiftfix_ingest.delimited_params import DelimitedParams
+
+    random = np.random.default_rng(1)
+    good = ("t,f,s\n" + "".join(f"{x},0.5\n" for x in LINES * 4)).encode()
+    path, alphabet = tmp_path / "log.csv", list(b'",;\t \n\r\0\x0c\xff-.eE_0179Zn:+')
+    params = DelimitedParams(
+        files=(path,),
+        columns={"time": "t", "frequency": "f", "sigma": "s"},
+        units={"frequency": "Hz", "sigma": "Hz"},
+        time_scale="UTC",
+        station="ORREL",
+        nominal_frequency=158.3e6,
+        on_bad_row="reject",
+    )
+    taken = 0
+    for _ in range(400):
+        data = bytearray(good)
+        for _ in range(int(random.integers(1, 8))):
+            at = int(random.integers(len(data)))
+            if random.random() < 0.7:
+                data[at] = random.choice(alphabet)
+            else:
+                del data[at : at + int(random.integers(1, 60))]
+        path.write_bytes(bytes(data))
+        try:
+            table = read_delimited({}, params, context)["frequencies"]
+        except InputError:
+            continue
+        taken += 1
+        source = table.sources[0]
+        assert source.rows_read == source.rows_accepted + source.rows_rejected
+        assert source.rows_accepted == len(table) and source.rows_rejected == len(table.rejects)
+        assert len({r.row_number for r in table.rejects} | set(table.array("row_number"))) == source.rows_read
+    assert taken > 200
+
+
+DECLARATIONS = {
+    'time_scale = "UTC"': ("", "nodes.log.params.time_scale: time without scale"),
+    'time_tag = "middle"': ("", "nodes.log.params.time_tag: counts over an interval without time_tag"),
+    'station = "ORREL"': ("", "nodes.log.params.station: no station"),
+    'sigma = "1 Hz"': ("", "nodes.log.params.sigma: no 1-sigma"),
+    'time = "t", ': ("", "nodes.log.params.columns: the time column is not declared"),
+    'units = { frequency = "Hz" }': ("", "nodes.log.params.units.frequency: the unit of the frequency column"),
+    'frequency = "Hz"': ('frequenzy = "Hz"', "did you mean frequency?"),
+    'frequency = "f"': ('frequency = "f", sigm = "s"', "unknown role of a column"),
+    'time = "t"': ("time = 1.5", "nodes.log.params.columns.time: not a column"),
+    'frequency = "f" ': ('frequency = "f", week = "w" ', 'a week column needs time_format = "gps"'),
+    'station = "ORREL"\n': (
+        'station = "ORREL"\nparams.sideband = "upper"\n',
+        'sideband needs frequency_kind = "audio"',
+    ),
+    "nominal_frequency = ": (
+        'frequency_kind = "audio"\nparams.nominal_frequency = ',
+        "a tone needs the receiver chain",
+    ),
+    'nominal_frequency = "158.3 MHz"': ('frequency_kind = "offset"', "offsets need the nominal frequency"),
+    'interval = "10 s"': ('interval = "10 s"\nparams.separator = "; "', "not one character"),
+    'interval = "10 s"\n': ('interval = "10 s"\nparams.header = false\n', "columns by name in a file without header"),
+    'sigma = "1 Hz"\n': ('sigma = "0 Hz"\n', "sigma is not greater than 0"),
+    'params.time_scale = "UTC"': ('params.time_scale = "TAI"\nparams.unmarked_utc = true', "only for UTC texts"),
+    'params.time_scale = "UTC"\n': (
+        'params.time_scale = "TAI"\nparams.time_format = "posix"\n',
+        "counts UTC days of 86400 s",
+    ),
+    'units = { frequency = "Hz"': ('units = { frequency = "Hz", sigma = "Hz"', "which is not declared"),
+}
+
+
+@pytest.mark.parametrize("old", DECLARATIONS)
+def test_what_is_left_unsaid_or_contradicts(tmp_path, old):
+    new, words = DECLARATIONS[old]
+    run(tmp_path)
+    text = (tmp_path / "p.toml").read_text()
+    assert old in text
+    changed = text.replace(old, new, 1) if new else text.replace(f"params.{old}\n", "").replace(old, "")
+    (tmp_path / "p.toml").write_text(changed)
+    result = run_pipeline(tmp_path / "p.toml")
+    assert result.exit_code == 4, result.error
+    assert words in str(result.error), str(result.error)
+
+
+SIZES = {
+    "offsets in kilohertz as megahertz": (
+        'params.frequency_kind = "offset"\n',
+        "MHz",
+        [10.5] * 8,
+        "offsets are too large",
+    ),
+    "frequencies as offsets": ('params.frequency_kind = "offset"\n', "Hz", [158300000.0] * 8, "not near the nominal"),
+    "megahertz as kilohertz": ("", "kHz", [158.3] * 8, "is the column in MHz?"),
+    "megahertz as gigahertz": ("", "GHz", [158.3] * 8, "1000 times too large: is the column in MHz?"),
+    "another channel": ("", "MHz", [98.1] * 8, "not near the nominal frequency"),
+}
+
+
+@pytest.mark.parametrize("case", SIZES)
+def test_sizes_that_no_log_has(tmp_path, case):
+    extra, unit, values, words = SIZES[case]
+    lines = [f"2026-03-01T12:{k:02d}:00Z,{v!r}" for k, v in enumerate(values)]
+    result = run(tmp_path, lines=lines, extra=extra, unit=unit)
+    assert result.exit_code == 4 and words in str(result.error), str(result.error)
+
+
+def test_sigmas_that_no_log_has(tmp_path):
+    rows = [f"{x},0.5" for x in LINES]
+    result = run_wide(tmp_path, "t,f,s", rows, 'sigma = "s"', ', sigma = "MHz"')
+    assert result.exit_code == 4 and "1-sigmas are too large for their unit" in str(result.error)
