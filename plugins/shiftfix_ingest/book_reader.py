@@ -69,15 +69,19 @@ class BookReader:
         return out
 
     def known(self, path: tuple, body: Mapping[str, Any], fields: tuple[str, ...]) -> None:
+        """Note every field that is not one of `fields`, at its key, with a suggestion."""
         for field in body:
             if field not in fields:
                 close = difflib.get_close_matches(field, fields, 1)
-                self.add(
-                    (*path, field),
-                    "unknown field",
-                    found=field,
-                    allowed=", ".join(fields),
-                    remedy=f"did you mean {close[0]}?" if close else "",
+                line, column = self.document.key_place((*path, field))
+                self.problems.append(
+                    Problem(
+                        f"{self.name}:{line}:{column}: {'.'.join(map(str, (*path, field)))}",
+                        "unknown field",
+                        found=field,
+                        allowed=", ".join(fields),
+                        remedy=f"did you mean {close[0]}?" if close else "",
+                    )
                 )
 
     def quantity(

@@ -71,26 +71,23 @@ _FIELDS = (
 )
 
 
-def station_row(book: BookReader, path: tuple, name: str, body: Mapping[str, Any]) -> dict[str, Any] | None:
-    """Return one row of the station table."""
+def station_row(book: BookReader, path: tuple, name: str, body: Mapping[str, Any]) -> dict[str, Any]:
+    """Return one row of the station table, and in `track` the name of a mover; what is wrong is noted in the book."""
     book.known(path, body, _FIELDS)
-    row: dict[str, Any] = {"station_id": name}
+    row: dict[str, Any] = {"station_id": name, "x_m": np.nan, "y_m": np.nan, "z_m": np.nan}
     if "track" in body:
-        track = body["track"]
-        if not isinstance(track, str):
-            book.add((*path, "track"), "not the name of an object of an ephemeris", found=repr(track))
-            return None
+        row["track"] = body["track"]
+        if not isinstance(body["track"], str):
+            book.add((*path, "track"), "not the name of an object of an ephemeris", found=repr(body["track"]))
         fixed = [f for f in _PLACE if f in body]
         if fixed:
             book.add(
                 (*path, "track"), "both a track and a fixed place", found=", ".join(fixed), remedy="keep one of them"
             )
-        row |= {"x_m": np.nan, "y_m": np.nan, "z_m": np.nan, "track": track}
     else:
         position = book.place(path, body)
-        if position is None:
-            return None
-        row |= dict(zip(("x_m", "y_m", "z_m"), map(float, position), strict=True))
+        if position is not None:
+            row |= dict(zip(("x_m", "y_m", "z_m"), map(float, position), strict=True))
         for field in ("vx", "vy", "vz"):
             row[f"{field}_m_s"] = book.quantity(path, body, field, "m/s", 0.0) or 0.0
         if "epoch" not in body and any(row[f"{f}_m_s"] for f in ("vx", "vy", "vz")):

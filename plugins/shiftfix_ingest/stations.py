@@ -44,9 +44,10 @@ def read_stations(inputs, params: BookParams, context) -> dict:
         With all problems of the book: missing datum or undulation, clashing ids, units, unknown fields.
     """
     book, source = _open(params, context)
-    tracks = {}
+    tracks, twice = {}, set()
     for ephemeris in inputs.get("ephemeris") or ():
         for name in dict.fromkeys(ephemeris.array("object_id").astype(str)):
+            twice |= {name} & set(tracks)
             tracks[name] = ephemeris.with_rows(
                 ephemeris.rows[ephemeris.array("object_id").astype(str) == name].reset_index(drop=True)
             )
@@ -54,10 +55,8 @@ def read_stations(inputs, params: BookParams, context) -> dict:
     seen: dict[str, list[tuple[tuple, dict]]] = {}
     for path, name, body in book.entries("stations"):
         row = station_row(book, path, name, body)
-        if row is None:
-            continue
         track = row.pop("track", None)
-        if track is not None:
+        if isinstance(track, str):
             if track not in tracks:
                 book.add(
                     (*path, "track"),
@@ -67,6 +66,13 @@ def read_stations(inputs, params: BookParams, context) -> dict:
                     remedy="connect the ephemeris to inputs.ephemeris",
                 )
                 continue
+            if track in twice:
+                book.add(
+                    (*path, "track"),
+                    "several connected ephemerides hold this track",
+                    found=repr(track),
+                    remedy="read its files in one node, or connect one of them",
+                )
             moving[name] = tracks[track]
         for other_path, other in seen.setdefault(name, []):
             if track is not None or name in moving:

@@ -125,9 +125,7 @@ def test_retuned_dial_in_a_column(tmp_path, side):
     """A receiver retuned in steps of 1 kHz: the tone jumps, the sky frequency does not."""
     dial = [158298.0 + k // 2 for k in range(6)] if side == "upper" else [158302.0 + k // 2 for k in range(6)]
     tones = [(s - 1e3 * d) * (1 if side == "upper" else -1) for s, d in zip(SKY, dial, strict=True)]
-    result = run(
-        tmp_path, rows(tones, dial=dial), f'params.sideband = "{side}"\n', ', dial = "d"', ', dial = "kHz"'
-    )
+    result = run(tmp_path, rows(tones, dial=dial), f'params.sideband = "{side}"\n', ', dial = "d"', ', dial = "kHz"')
     assert np.allclose(received(result), SKY, rtol=0.0, atol=1e-6)
 
 
