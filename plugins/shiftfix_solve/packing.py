@@ -7,7 +7,16 @@ from dataclasses import replace
 import numpy as np
 import pandas as pd
 
-from shiftfix.api import Alternative, Parameter, Solution, StationResult, ellipse, geodetic_from_itrs, utc_text
+from shiftfix.api import (
+    Alternative,
+    Parameter,
+    Solution,
+    StationResult,
+    ellipse,
+    enu_axes,
+    geodetic_from_itrs,
+    utc_text,
+)
 
 NEAR_EARTH_M = 1e8
 
@@ -24,8 +33,10 @@ def pack(answer, arc, bound, settings, starts, context) -> Solution:
         epoch_utc=utc_text(arc.epoch_tai_ns),
         frame=bound.frame,
         unobservable=answer.unobservable,
-        findings=tuple(answer.findings) + tuple(starts.findings),
-        cautions=cautions_for(context.emitter_classes),
+        findings=(_assumed(settings.fit.clocks, arc.rows.reference_hz), *answer.findings, *starts.findings),
+        cautions=cautions_for(
+            context.emitter_classes, float(np.median(arc.table.array("received_frequency_hz")))
+        ),
     )
     if answer.widened is None:
         return Solution(warnings=_warnings(answer, arc), rows=_base(arc), covariance_reason=answer.text, **fields)
@@ -61,7 +72,7 @@ def pack(answer, arc, bound, settings, starts, context) -> Solution:
         rest_frequency_drift_hz_s=drift,
         stations=_stations(answer, arc, fit, covariance),
         parameters=_parameters(fit, covariance, settings),
-        alternatives=_alternatives(answer, bound),
+        alternatives=_alternatives(answer, arc, bound),
         odds=float(answer.odds[0]),
         budget=answer.budget,
         **fields,
@@ -79,9 +90,31 @@ def _warnings(answer, arc) -> tuple[str, ...]:
         out += [f"rows left out ({reason}): {count}" for reason, count in sorted(reasons.items())]
     if answer.widened is not None and answer.widened.kind != "formal":
         out.append("the residuals contradict the stated noise; the error was widened to what they show")
-    if len(answer.odds) > 1:
+    if len(answer.odds) > 1 and answer.verdict in ("fix", "ambiguous"):
         out.append("other solutions fit; see the alternatives and their odds")
     return tuple(out)
+
+
+def _assumed(clocks, reference_hz: float) -> str:
+    """Return what the answer and its odds take for granted about oscillators, in words."""
+    emitter = {
+        "constant": "constant",
+        "drift": f"drifts by 0 +/- {clocks.emitter_drift_sigma_per_s:.2g} 1/s "
+        f"(+/- {clocks.emitter_drift_sigma_per_s * reference_hz:.2g} Hz/s)",
+        "random_walk": f"walks by {clocks.emitter_walk:.2g} in one second",
+    }[clocks.emitter]
+    station = {
+        "constant": "constant",
+        "drift": f"drift by 0 +/- {clocks.station_drift_sigma_per_s:.2g} 1/s",
+        "random_walk": f"walk by {clocks.station_walk:.2g} in one second",
+        "piecewise": "constant within an arc",
+        "calibrated": "from known emitters",
+    }[clocks.station]
+    steps = f", with {len(clocks.steps_s)} steps of its frequency" if clocks.steps_s else ""
+    rest = ""
+    if np.isfinite(clocks.rest_log_sigma):
+        rest = f"; rest frequency beforehand +/- {clocks.rest_log_sigma * reference_hz:.4g} Hz"
+    return f"assumed (1 sigma): emitter's oscillator {emitter}{steps}; stations' oscillators {station}{rest}"
 
 
 def _base(arc) -> pd.DataFrame:
@@ -183,9 +216,10 @@ def _parameters(fit, covariance, settings) -> tuple[Parameter, ...]:
     sigma = np.sqrt(np.diag(covariance))
     out = []
     prior = {q.index: q.sigma for q in settings.fit.priors if hasattr(q, "index")}
+    values = _usual_angles(fit.motion.parameter_names, fit.parameters)
     for k, name in enumerate(fit.motion.parameter_names):
         informed = "prior" if k in prior and sigma[k] > 0.7 * prior[k] else "data"
-        out.append(Parameter(name, float(fit.parameters[k]), float(sigma[k]), "estimated", informed))
+        out.append(Parameter(name, float(values[k]), float(sigma[k]), "estimated", informed))
     scale = np.abs(fit.nuisance.prior_rows)
     for k, name in enumerate(fit.nuisance.names):
         if "walk" in name:
@@ -196,35 +230,62 @@ def _parameters(fit, covariance, settings) -> tuple[Parameter, ...]:
     return tuple(out)
 
 
-def _geodetic(answer, arc, bound) -> dict | None:
-    position, covariance = answer.position, answer.state_covariance[:3, :3]
+def _usual_angles(names, parameters: np.ndarray) -> np.ndarray:
+    """Return the parameters with latitude within +/- pi/2 and longitude within +/- pi.
+
+    The fit of an emitter at rest may go over a pole: the place is the same with latitude pi - B and longitude L + pi.
+    """
+    out = np.array(parameters, dtype=float)
+    if "latitude_rad" not in names or "longitude_rad" not in names:
+        return out
+    i, j = names.index("latitude_rad"), names.index("longitude_rad")
+    if np.cos(out[i]) < 0.0:
+        out[j] += np.pi
+    out[i] = np.arcsin(np.sin(out[i]))
+    out[j] = (out[j] + np.pi) % (2.0 * np.pi) - np.pi
+    return out
+
+
+def _place(position, arc, bound) -> tuple[np.ndarray, np.ndarray, dict] | None:
+    """Return rotation to ITRS, east-north-up axes and geodetic place of a position; None far from the Earth."""
     if np.linalg.norm(position) > NEAR_EARTH_M:
         return None
-    if bound.frame == "GCRS":
-        rotation = arc.frame.rotation(np.zeros(1))[0]
-        position, covariance = rotation.T @ position, rotation.T @ covariance @ rotation
-    latitude, longitude, height = geodetic_from_itrs(position)
-    axes = np.array(
-        [
-            [-np.sin(longitude), np.cos(longitude), 0.0],
-            [-np.sin(latitude) * np.cos(longitude), -np.sin(latitude) * np.sin(longitude), np.cos(latitude)],
-        ]
-    )
-    horizontal = axes @ covariance @ axes.T
-    return {
+    rotation = arc.frame.rotation(np.zeros(1))[0].T if bound.frame == "GCRS" else np.eye(3)
+    latitude, longitude, height = (float(a) for a in geodetic_from_itrs(rotation @ position))
+    place = {
         "latitude_deg": float(np.degrees(latitude)),
         "longitude_deg": float(np.degrees(longitude)),
-        "height_m": float(height),
-        "ellipse_50": ellipse(horizontal, 0.50),
-        "ellipse_95": ellipse(horizontal, 0.95),
+        "height_m": height,
     }
+    return rotation, enu_axes(latitude, longitude), place
 
 
-def _alternatives(answer, bound) -> tuple[Alternative, ...]:
+def _geodetic(answer, arc, bound) -> dict | None:
+    found = _place(answer.position, arc, bound)
+    if found is None:
+        return None
+    rotation, axes, place = found
+    turn = axes @ rotation
+    local = turn @ answer.state_covariance[:3, :3] @ turn.T
+    out = {
+        **place,
+        "height_sigma_m": float(np.sqrt(max(local[2, 2], 0.0))),
+        "ellipse_50": ellipse(local[:2, :2], 0.50),
+        "ellipse_95": ellipse(local[:2, :2], 0.95),
+    }
+    if bound.frame == "ITRS" and np.any(answer.velocity):
+        east, north, up = (float(v) for v in axes @ answer.velocity)
+        course = float(np.degrees(np.arctan2(east, north)) % 360.0)
+        out |= {"speed_m_s": float(np.hypot(east, north)), "course_deg": course, "climb_m_s": up}
+    return out
+
+
+def _alternatives(answer, arc, bound) -> tuple[Alternative, ...]:
     out = []
     for fit, chance in zip(answer.others, answer.odds[1:], strict=True):
         position, velocity, _ = bound.state(fit.path)
         state = {"position_m": [float(v) for v in position], "velocity_m_s": [float(v) for v in velocity]}
-        used = fit.used
-        out.append(Alternative(state, float(chance), float(np.sqrt(np.mean(fit.normalised[used] ** 2)))))
+        rms = float(np.sqrt(np.mean(fit.normalised[fit.used] ** 2)))
+        found = _place(position, arc, bound)
+        out.append(Alternative(state, float(chance), rms, found[2] if found else None))
     return tuple(out)

@@ -103,6 +103,6 @@ def search(inputs, params, context):
         parameters=states,
         rest_frequency_hz=frequency,
         rest_frequency_sigma_hz=sigma,
-        findings=(f"{len(candidates)} candidates, {len(states)} starting states kept", *arc.notes),
+        findings=(f"search: {len(candidates)} candidates; starting states kept: {len(states)}", *arc.notes),
     )
     return {"starts": starts}

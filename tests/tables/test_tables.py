@@ -10,11 +10,14 @@ import pandas as pd
 import pytest
 
 from shiftfix.api import (
+    Alternative,
     FrequencyTable,
+    Parameter,
     Quantity,
     SchemaError,
     Solution,
     Source,
+    StationResult,
     cautions_for,
     merge_frequency_tables,
     solution_document,
@@ -156,6 +159,98 @@ def test_cautions_are_always_there_and_classes_add_theirs():
     with pytest.raises(ValueError, match="allowed"):
         cautions_for(("pirate",))
     assert Quantity(1.0).sigma is None
+
+
+@pytest.mark.parametrize(
+    ("frequency_hz", "words"),
+    [
+        (406.028e6, ["DISTRESS"]),
+        (121.5e6, ["DISTRESS", "AVIATION"]),
+        (156.8e6 - 9e3, ["DISTRESS", "MARITIME"]),
+        (2.182e6, ["DISTRESS"]),
+        (158.3e6, ["MARITIME"]),
+        (1575.42e6 + 5e3, ["NAVIGATION"]),
+        (1176.45e6, ["AVIATION", "NAVIGATION"]),
+        (437.26e6, []),
+        (401.65e6, []),
+        (float("nan"), []),
+        (None, []),
+    ],
+)
+def test_a_band_of_safety_services_adds_its_caution_undeclared(frequency_hz, words):
+    general = cautions_for(())
+    texts = cautions_for((), frequency_hz)
+    assert [t.split()[0].rstrip(":") for t in texts[: len(words)]] == words and texts[len(words) :] == general
+    assert all("lies in a band of this service" in t for t in texts[: len(words)])
+    declared = cautions_for(("distress", "aviation", "maritime", "navigation"), frequency_hz)
+    assert not any("lies in a band" in t for t in declared), "declared: no reason needed, no second one"
+
+
+def delivered(**changes):
+    ellipse = {"semi_major_m": 12.0, "semi_minor_m": 7.0, "azimuth_deg": 33.0}
+    place = {"latitude_deg": -41.0, "longitude_deg": -26.0, "height_m": 5.1e5}
+    base = dict(
+        verdict="ambiguous",
+        verdict_text="2 solutions fit",
+        epoch_utc="2026-03-01T12:00:00.000000Z",
+        position_m=np.array([7e6, 1.0, 2.0]),
+        velocity_m_s=np.array([3.0, 7.5e3, 4.0]),
+        covariance=np.diag([4.0, 5, 6, 7, 8, 9]),
+        geodetic=place | {"height_sigma_m": np.float64(3.0), "ellipse_95": ellipse, "ellipse_50": ellipse},
+        rest_frequency_hz=437e6,
+        rest_frequency_sigma_hz=0.2,
+        stations=(StationResult("A", 1e-9, None, None, float("nan"), 3, 1),),
+        parameters=(Parameter("x_m", np.float64(7e6), 2.0), Parameter("turn_2_s", 5.0, None, "fixed", "prior")),
+        chi_square=np.float64(3.5),
+        degrees_of_freedom=4,
+        odds=0.7,
+        alternatives=(Alternative({"position_m": [1.0, 2.0, 3.0], "velocity_m_s": [4.0, 5.0, 6.0]}, 0.3, 1.1, place),),
+        budget={"total": {"position_m": 3.9, "velocity_m_s": 4.9}},
+    )
+    return Solution(**(base | changes))
+
+
+def test_delivered_solution_validates_with_everything_in_it():
+    document = solution_document(delivered(), title="t", emitter_classes=())
+    jsonschema.validate(document, solution_schema())
+    assert document["covariance"][1] == [0.0, 5.0, 0.0, 0.0, 0.0, 0.0]
+    assert document["stations"][0]["residual_rms_hz"] is None, "not a number becomes null"
+    assert document["alternatives"][0]["geodetic"]["latitude_deg"] == -41.0
+    assert document["remedy"] and document["exit_code"] == 6
+    assert json.loads(json.dumps(document, allow_nan=False)) == document
+
+
+def test_a_covariance_that_is_not_finite_is_none_with_a_reason():
+    document = solution_document(delivered(covariance=np.full((6, 6), np.nan)), title="t", emitter_classes=())
+    jsonschema.validate(document, solution_schema())
+    assert document["covariance"] is None and "not finite" in document["covariance_reason"]
+
+
+def test_the_schema_refuses_what_is_no_solution():
+    good = solution_document(delivered(), title="t", emitter_classes=())
+    for key, value in (
+        ("schema_version", 2),
+        ("verdict", "perhaps"),
+        ("epoch_utc", "2026-03-01 12:00:00"),
+        ("frame", "TEME"),
+        ("covariance", [[1.0]]),
+        ("rest_frequency_hz", None),
+        ("cautions", []),
+        ("odds", 1.5),
+        ("surplus", 1),
+    ):
+        with pytest.raises(jsonschema.ValidationError):
+            jsonschema.validate(good | {key: value}, solution_schema())
+    for key in good:
+        with pytest.raises(jsonschema.ValidationError):
+            jsonschema.validate({k: v for k, v in good.items() if k != key}, solution_schema())
+
+
+def test_every_verdict_has_an_exit_code_and_a_remedy():
+    from shiftfix.tables.solution import REMEDIES, VERDICTS
+
+    assert set(REMEDIES) == set(VERDICTS) == set(solution_schema()["properties"]["verdict"]["enum"])
+    assert all(bool(REMEDIES[v]) == (code != 0) for v, code in VERDICTS.items())
 
 
 def test_bundled_orientation_says_how_long_it_holds():

@@ -75,6 +75,12 @@ def test_vessel_with_a_turn():
             found = values[f"{axis}_{leg}_m_s"]
             assert abs(found.value - speed) < 4 * found.sigma
     assert abs(values["turn_2_s"].value) < 4 * values["turn_2_s"].sigma
+    leg = 2 if values["turn_2_s"].value < 0.0 else 1
+    east_speed, north_speed = (values[f"{axis}_{leg}_m_s"].value for axis in ("east", "north"))
+    ground = solution.geodetic
+    assert ground["speed_m_s"] == pytest.approx(np.hypot(east_speed, north_speed), abs=1e-3)
+    assert np.radians(ground["course_deg"]) == pytest.approx(np.arctan2(east_speed, north_speed), abs=1e-3)
+    assert abs(ground["climb_m_s"]) < 1e-3 and ground["height_sigma_m"] == pytest.approx(5.0, rel=0.2)
     offsets = result.tables["offsets.offsets"]
     for name, offset in truth["offsets"].items():
         mine = offsets.array("station_id") == name

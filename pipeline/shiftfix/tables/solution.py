@@ -20,6 +20,18 @@ VERDICTS: Mapping[str, int] = {
 }
 """Verdict to exit code of the run."""
 
+REMEDIES: Mapping[str, str] = {
+    "fix": "",
+    "ambiguous": "a pass or station with another geometry, a tighter prior of height, region or emitter drift, or knowledge "
+    "from elsewhere",
+    "not observable": "a station far from the others, another pass or a longer arc, or a prior (rest frequency, height, region)",
+    "not locatable by this method": "a receiver that moves (ship, aircraft, satellite), or another kind of measurement",
+    "not converged": "a longer arc or more stations; check that the declared motion fits the emitter",
+    "quality failed": "look into residuals.csv: the declared motion, sideband and unit of each log, time scale and place of "
+    "each station, more than one emitter",
+}
+"""Verdict to what would help, in words."""
+
 
 @dataclass(frozen=True)
 class Parameter:
@@ -50,11 +62,12 @@ class StationResult:
 
 @dataclass(frozen=True)
 class Alternative:
-    """Another state that fits: same frame, epoch and order as the solution, its odds and its rms."""
+    """Another state that fits: same frame, epoch and order as the solution, its odds, rms and place near the Earth."""
 
     state: Mapping[str, Any]
     odds: float
     rms: float
+    geodetic: Mapping[str, Any] | None = None
 
 
 @dataclass(frozen=True, eq=False, kw_only=True)
@@ -80,7 +93,8 @@ class Solution(Table):
     covariance_kind : str
         formal, scaled or widened: what was done to the formal covariance.
     geodetic : mapping or None
-        latitude_deg, longitude_deg, height_m, ellipse_95 and ellipse_50 {semi_major_m, semi_minor_m, azimuth_deg}.
+        latitude_deg, longitude_deg, height_m, ellipse_95 and ellipse_50 {semi_major_m, semi_minor_m, azimuth_deg};
+        height_sigma_m; for a motion tied to the ground also speed_m_s, course_deg (clockwise from north) and climb_m_s.
     rest_frequency_hz, rest_frequency_sigma_hz, rest_frequency_drift_hz_s : float or None
     frequency_datum : str
         Which reference defines frequency.

@@ -11,7 +11,7 @@ from typing import Any
 import numpy as np
 
 from shiftfix.tables.cautions import cautions_for
-from shiftfix.tables.solution import Solution
+from shiftfix.tables.solution import REMEDIES, Solution
 
 SCHEMA_VERSION = 1
 
@@ -29,9 +29,16 @@ def solution_document(solution: Solution, *, title: str, emitter_classes: Sequen
     solution : Solution
     title : str
     emitter_classes : sequence of str
-        Decide which cautions are added to those of the solution.
+        With the received frequency they decide which cautions are added to those of the solution.
+
+    Notes
+    -----
+    A covariance with a value that is not finite is no covariance: it becomes null, with the reason.
     """
-    cautions = tuple(dict.fromkeys((*cautions_for(emitter_classes), *solution.cautions)))
+    cautions = tuple(dict.fromkeys((*cautions_for(emitter_classes, _received_hz(solution)), *solution.cautions)))
+    covariance, reason = solution.covariance, solution.covariance_reason
+    if covariance is not None and not np.isfinite(covariance).all():
+        covariance, reason = None, "the covariance has values that are not finite"
     state = {"position_m": _list(solution.position_m), "velocity_m_s": _list(solution.velocity_m_s)}
     document = {
         "schema_version": SCHEMA_VERSION,
@@ -39,13 +46,14 @@ def solution_document(solution: Solution, *, title: str, emitter_classes: Sequen
         "emitter_classes": list(emitter_classes),
         "verdict": solution.verdict,
         "verdict_text": solution.verdict_text,
+        "remedy": REMEDIES[solution.verdict],
         "exit_code": solution.exit_code,
         "motion": solution.motion,
         "epoch_utc": solution.epoch_utc,
         "frame": solution.frame,
         "state": state,
-        "covariance": None if solution.covariance is None else [_list(row) for row in solution.covariance],
-        "covariance_reason": solution.covariance_reason,
+        "covariance": None if covariance is None else [_list(row) for row in covariance],
+        "covariance_reason": reason,
         "covariance_kind": solution.covariance_kind,
         "geodetic": _clean(solution.geodetic),
         "rest_frequency_hz": solution.rest_frequency_hz,
@@ -57,7 +65,7 @@ def solution_document(solution: Solution, *, title: str, emitter_classes: Sequen
         "chi_square": solution.chi_square,
         "degrees_of_freedom": solution.degrees_of_freedom,
         "odds": solution.odds,
-        "alternatives": [{"state": _clean(a.state), "odds": a.odds, "rms": a.rms} for a in solution.alternatives],
+        "alternatives": [vars(a) for a in solution.alternatives],
         "converged": solution.converged,
         "rank_full": solution.rank_full,
         "at_bound": solution.at_bound,
@@ -71,6 +79,11 @@ def solution_document(solution: Solution, *, title: str, emitter_classes: Sequen
         "cautions": list(cautions),
     }
     return _clean(document)
+
+
+def _received_hz(solution: Solution) -> float | None:
+    received = solution.array("received_frequency_hz")
+    return float(np.median(received)) if len(received) else None
 
 
 def _list(values: np.ndarray | None) -> list[float] | None:
