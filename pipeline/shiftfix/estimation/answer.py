@@ -170,11 +170,12 @@ def solve_arc(
                 f"direction {ratio:.0e}); more stations, a longer arc or a prior would close it"
             )
     elif unseen or not fit.rank_full:
-        words = "; ".join(unseen) or "one combination of the parameters"
-        verdict, text = "not observable", f"the data do not determine the emitter: not seen is {words}"
+        words = unseen[0] if unseen else "one combination of the parameters"
+        more = f", and {len(unseen) - 1} more" if len(unseen) > 1 else ""
+        verdict, text = "not observable", f"the data do not determine the emitter; not seen: {words}{more}"
     elif (~fit.used).mean() > 0.4:
         share = (~fit.used).mean()
-        verdict, text = "quality failed", f"{share:.0%} of the rows contradict the solution: model or data are wrong"
+        verdict, text = "quality failed", f"{100 * share:.0f} % of the rows contradict the solution: model or data are wrong"
     elif len(fits) > 1 and chances[0] < settings.odds_threshold:
         verdict = "ambiguous"
         text = f"{len(fits)} solutions fit; odds {', '.join(f'{c:.2f}' for c in chances[:4])}"
@@ -297,10 +298,11 @@ def _unseen(fit: Fit, bound: BoundMotion, widened: Widened) -> tuple[str, ...]:
         if sigma > limit or not np.isfinite(sigma):
             # What moves together with the position tells the user what to add.
             speed = covariance[3:, :3] @ vector / max(value, 1e-300) * sigma
-            size = "m, 1 sigma" if sigma < distance else "m, 1 sigma: as good as unknown"
-            text = "position along " + describe_direction(vector * sigma, axes, names, size)
+            size = f"1 sigma {sigma / 1e3:.3g} km" if sigma < distance else "as good as unknown"
+            text = f"position ({describe_direction(vector, axes, names)}; {size})"
             if np.linalg.norm(speed) > 0:
-                text += ", together with velocity along " + describe_direction(speed, axes, names, "m/s")
+                size = f"; {np.linalg.norm(speed):.3g} m/s" if sigma < distance else ""
+                text += f" together with velocity ({describe_direction(speed, axes, names)}{size})"
             words.append(text)
     return tuple(words)
 
@@ -349,6 +351,6 @@ def _findings(fit: Fit, widened: Widened, chances: np.ndarray) -> tuple[str, ...
         out.append(f"condition number of the scaled problem {fit.condition:.1e}: weak geometry or a free common offset")
     if len(chances) > 1:
         out.append(
-            f"{len(chances)} distinct solutions within the listed range; odds of the reported one {chances[0]:.3f}"
+            f"{len(chances)} distinct minima near the least cost; odds of the first {chances[0]:.3f}"
         )
     return tuple(out)

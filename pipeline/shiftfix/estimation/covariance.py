@@ -34,15 +34,17 @@ def local_axes(position: np.ndarray, velocity: np.ndarray) -> np.ndarray:
     return np.array([radial, np.cross(cross, radial), cross])
 
 
-def describe_direction(vector: np.ndarray, axes: np.ndarray, names: tuple[str, str, str], unit: str) -> str:
-    """Return a direction in words: components along named axes, largest first, those below 5 % left out."""
+def describe_direction(vector: np.ndarray, axes: np.ndarray, names: tuple[str, str, str]) -> str:
+    """Return a direction in words: shares of named axes (squares, sum 100 %), largest first, those below 1 % left out."""
     parts = axes @ vector
     size = np.linalg.norm(parts)
     if size == 0:
         return "no direction"
-    order = np.argsort(-np.abs(parts))
-    words = [f"{abs(parts[k]) / size:.0%} {names[k]}" for k in order if abs(parts[k]) > 0.05 * size]
-    return f"{', '.join(words)} ({size:.3g} {unit})"
+    shares = (parts / size) ** 2
+    order = [k for k in np.argsort(-shares, kind="stable") if shares[k] > 0.01]
+    if len(order) == 1 or shares[order[0]] > 0.985:
+        return names[order[0]]
+    return ", ".join(f"{shares[k]:.0%} {names[k]}" for k in order).replace("%", " %")
 
 
 def nearest_distance(fit: Fit) -> float:

@@ -68,7 +68,7 @@ def widen(fit: Fit, mode: str = "declared", *, level: float = 1e-3, minimum_rows
             f"residuals are {np.sqrt(reduced):.2f} times the stated noise (chi-square {fit.chi_square:.0f} for {dof})"
         )
     if p_white < level:
-        findings.append(f"residuals are not white (portmanteau {statistic:.0f}, p {p_white:.1e})")
+        findings.append(f"residuals are not white: neighbours are alike (Ljung-Box {statistic:.0f}, chance {p_white:.1e})")
     if mode == "declared" and not too_large and p_white >= level:
         return Widened(fit, fit.covariance, "formal", fit.carry, (), None)
     if count < minimum_rows:
