@@ -12,7 +12,9 @@ from pathlib import Path
 
 import pytest
 
+from shiftfix.api import cautions_for
 from shiftfix.cli.summary import summary_lines
+from shiftfix.tables.cautions import EMITTER_CLASSES
 
 DEMO = Path(__file__).parents[2] / "demo_tracks" / "tamsin_pass"
 ENVIRONMENT = {**os.environ, "OMP_NUM_THREADS": "1"}
@@ -133,6 +135,7 @@ def document(**changes):
     base = {
         "verdict": "ambiguous",
         "verdict_text": "2 solutions fit; odds 0.60, 0.40",
+        "remedy": "r " * 200,
         "title": "A title " * 20,
         "epoch_utc": "2026-03-01T12:00:00Z",
         "motion": "orbit",
@@ -166,8 +169,24 @@ def test_summary_fits_a_terminal():
         odds=None,
         alternatives=[],
         rest_frequency_hz=None,
+        verdict_text="v " * 400,
     )
-    for lines in (summary_lines(document()), summary_lines(refused)):
+    far = document(geodetic=None, state={"position_m": [7e11, 1e11, -3e11], "velocity_m_s": [0, 7.5e3, 0]})
+    every = document(cautions=list(cautions_for(EMITTER_CLASSES)), verdict_text="v " * 400)
+    for given in (document(), refused, far, every):
+        lines = summary_lines(given)
         assert len(lines) <= 24 and max(map(len, lines)) <= 80
-        assert lines[-1].endswith("...") or lines[-2].startswith("caution:")
-    assert any("odds 0.400" in line for line in summary_lines(document()))
+        assert sum(line.startswith("caution: ") for line in lines) >= 1
+    text = "\n".join(summary_lines(document()))
+    assert "odds 0.400: 100 km away" in text and "latitude -41.00 deg, longitude -26.00 deg" in text
+    assert "position  (7e+08 km, 1e+08 km, -3e+08 km) in GCRS" in summary_lines(far)
+    assert "would help: r r" in "\n".join(summary_lines(refused))
+
+
+@pytest.mark.parametrize("declared", [("distress",), ("distress", "maritime", "space"), EMITTER_CLASSES])
+def test_the_most_urgent_caution_is_never_cut(declared):
+    texts = cautions_for(declared)
+    shown = " ".join(line.strip() for line in summary_lines(document(cautions=list(texts))))
+    assert texts[0] in shown, "in full"
+    for text in texts[1 : len(declared)]:
+        assert text.split(". ")[0] in shown or not text[:6].isupper()
