@@ -83,7 +83,9 @@ def test_two_runs_in_two_threads_do_not_meet(meal, kitchen, tmp_path):
     ("misdeed", "words"),
     [
         ("raise", "the pot boils over"),
-        ("import", "pip install saffron"),
+        ("import", "pip install saffron, or"),
+        ("name", "report this to the authors of toy-kitchen"),
+        ("own", "report this to the authors of toy-kitchen"),
         ("wrong", "output 'dish' is missing"),
         ("surplus", "output 'crumbs' is not declared"),
         ("nothing", "gave no mapping"),

@@ -55,7 +55,11 @@ def cook(inputs, params, context):
     if params.misdeed == "raise":
         raise RuntimeError("the pot boils over")
     if params.misdeed == "import":
-        raise ImportError("No module named 'saffron'", name="saffron")
+        raise ModuleNotFoundError("No module named 'saffron.threads'", name="saffron.threads")
+    if params.misdeed == "own":
+        raise ModuleNotFoundError("No module named 'toy.forks'", name="toy.forks")
+    if params.misdeed == "name":
+        raise ImportError("cannot import name 'ladle' from 'spoons.wood'", name="spoons.wood")
     if params.misdeed == "interrupt":
         raise KeyboardInterrupt
     if params.misdeed == "wait":

@@ -220,12 +220,12 @@ def _run_node(
         record.state = "failed"
         emit(Event("node_failed", node.name, text=f"{type(error).__name__}: {error}"))
         shapes = ", ".join(f"{p}: {len(t)} rows" for p, t in inputs.items() if isinstance(t, Table))
-        missing = isinstance(error, ImportError) and getattr(error, "name", None)
-        remedy = (
-            f"a library is missing: pip install {error.name}"
-            if missing
-            else f"report this to the authors of {plugin.distribution}"
-        )
+        # Only a module that is not there can be installed; a name that a module lacks is a fault of the plugin.
+        library = (getattr(error, "name", None) or "").partition(".")[0] if isinstance(error, ModuleNotFoundError) else ""
+        if library and library != plugin.module.partition(".")[0]:
+            remedy = f"a library is missing: pip install {library}, or the distribution that provides it"
+        else:
+            remedy = f"report this to the authors of {plugin.distribution}"
         raise NodeError(
             Problem(where, f"failed with {type(error).__name__}: {error}", found=shapes, remedy=remedy)
         ) from error
