@@ -220,3 +220,19 @@ def test_years_beyond_the_reach_of_nanoseconds_are_refused(scale):
     assert values[0] == tai_ns_from_calendar(2200, 3, 1, 12, 0, 0, scale) and (values[1:] == 0).all()
     assert [index for index, _ in problems] == [1, 2, 3]
     assert all("out of range; allowed: 1900 to 2200" in message for _, message in problems)
+
+
+def test_many_days_of_year_are_the_same_as_one_by_one(monkeypatch):
+    """Every day of 2015 to 2017, and days that the year does not have; only what is no time takes the slow way."""
+    from shiftfix.physics import timescales
+
+    texts = [f"{y}-{d:03d}T{d % 24:02d}:{d % 60:02d}:07.{d:03d}Z" for y in (2015, 2016, 2017) for d in range(1, 367)]
+    wanted = [tai_ns_from_utc(t) if t[:8] not in ("2015-366", "2017-366") else 0 for t in texts]
+    spring = tai_ns_from_utc("2016-03-01T00:00:00Z")
+    asked = []
+    slow = timescales._parse
+    monkeypatch.setattr(timescales, "_parse", lambda *a: asked.append(a[0]) or slow(*a))
+    values, problems = tai_ns_from_texts([*texts, "2016-000T00:00:00Z", "2016-12aT00:00:00Z", "2016-03-01T00:00:00Z"])
+    assert values[:-3].tolist() == wanted and values[-1] == spring
+    assert [index for index, _ in problems] == [365, 1097, 1098, 1099]
+    assert len(asked) == 4

@@ -164,6 +164,8 @@ def tai_ns_from_texts(
             fixed = None
         if fixed is not None and fixed.dtype.itemsize >= 19:
             out, done = _fixed_width(fixed, scale, require_z)
+            if not done.all():
+                _fill_day_of_year(fixed, scale, require_z, out, done)
     problems: list[tuple[int, str]] = []
     for index in np.flatnonzero(~done):
         try:
@@ -225,6 +227,26 @@ def _fixed_width(texts: np.ndarray, scale: str, require_z: bool) -> tuple[np.nda
     else:
         total = total + _OFFSET_NS[scale]
     return np.where(ok, total, 0), ok
+
+
+def _fill_day_of_year(texts: np.ndarray, scale: str, require_z: bool, out: np.ndarray, done: np.ndarray) -> None:
+    """Fill in what reads YYYY-DDDThh:mm:ss[.f*][Z] by writing it as a calendar date first."""
+    bytes_ = texts.view(np.uint8).reshape(len(texts), texts.dtype.itemsize)
+    rows = np.flatnonzero(~done & (bytes_[:, 4] == 45) & np.isin(bytes_[:, 8], list(b"T ")))
+    digit = bytes_[rows][:, [0, 1, 2, 3, 5, 6, 7]] - 48
+    good = (digit <= 9).all(axis=1)
+    rows, digit = rows[good], digit[good].astype(np.int64)
+    year, day = digit[:, :4] @ [1000, 100, 10, 1], digit[:, 4:] @ [100, 10, 1]
+    first = (year - 1970).astype("datetime64[Y]").astype("datetime64[D]")
+    date = first + (day - 1)
+    good = (day >= 1) & (date.astype("datetime64[Y]") == first.astype("datetime64[Y]")) & (year >= _YEARS[0])
+    good &= year <= _YEARS[1]
+    rows, date = rows[good], date[good]
+    if not rows.size:
+        return
+    calendar = date.astype("S10").view(np.uint8).reshape(len(rows), 10)
+    joined = np.ascontiguousarray(np.hstack([calendar, bytes_[rows][:, 8:]]))
+    out[rows], done[rows] = _fixed_width(joined.view(f"S{joined.shape[1]}").ravel(), scale, require_z)
 
 
 def _last_days(months: np.ndarray) -> np.ndarray:
