@@ -51,6 +51,7 @@ _EXPORTS: dict[str, str] = {
     "Registry": "shiftfix.graph.registry",
     "RunResult": "shiftfix.graph.runner",
     "check_pipeline": "shiftfix.graph.inspection",
+    "describe_motion": "shiftfix.graph.inspection",
     "describe_node": "shiftfix.graph.inspection",
     "explain_pipeline": "shiftfix.graph.inspection",
     "list_motions": "shiftfix.graph.inspection",

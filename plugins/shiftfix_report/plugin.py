@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 
-from shiftfix.api import NodeSpec, Port, Solution, hookimpl, param
+from shiftfix.api import DefinitionError, NodeSpec, Port, Problem, Solution, hookimpl, param
 
 
 @dataclass(frozen=True)
@@ -21,17 +21,31 @@ class ResidualsParams:
     name: str = param("file name in the run folder", default="residuals.csv")
 
 
+def _checked(name: str, context) -> str:
+    """Return the file name of a product; the run folder holds it, so it names no other place."""
+    if not name or name.startswith((".", "/")) or ".." in name.split("/") or "\\" in name:
+        raise DefinitionError(
+            Problem(
+                f"nodes.{context.node}.params.name",
+                "not the name of a file in the run folder",
+                found=name,
+                allowed="a name such as report.txt, or folder/report.txt",
+            )
+        )
+    return name
+
+
 def _text(inputs, params, context):
     from shiftfix_report.text import report_text
 
-    context.write(params.name, report_text(inputs["solution"], context.title, context.emitter_classes))
+    context.write(_checked(params.name, context), report_text(inputs["solution"], context.title, context.emitter_classes))
     return {}
 
 
 def _residuals(inputs, params, context):
     from shiftfix_report.residuals import residuals_csv
 
-    context.write(params.name, residuals_csv(inputs["solution"]))
+    context.write(_checked(params.name, context), residuals_csv(inputs["solution"]))
     return {}
 
 

@@ -11,8 +11,10 @@ from shiftfix.api import Quantity, param
 class SearchParams:
     """Parameters of `solve.search`."""
 
-    motion: str = param("motion of the emitter: orbit, surface, fixed, polynomial or one from a plugin")
-    motion_options: dict = param("options of that motion, as a table", default={})
+    motion: str = param(
+        "motion of the emitter: orbit, surface, fixed, polynomial or one from a plugin", motion="name"
+    )
+    motion_options: dict = param("options of that motion, as a table", default={}, motion="options")
     emitter: str = param("emitter to solve for; needed when the table holds several", default="")
     rest_frequency: Quantity | None = param(
         "declared rest frequency with its 1-sigma", default=None, unit="Hz", minimum=0.0, sigma=True
@@ -35,7 +37,7 @@ class FixParams:
     """Parameters of `solve.fix`."""
 
     emitter: str = param("emitter to solve for; needed when the table holds several", default="")
-    motion: str = param("motion to fit; empty takes that of the starting states", default="")
+    motion: str = param("motion to fit; empty takes that of the starting states", default="", motion="name")
     station_model: str = param(
         "station oscillators: constant or drift; random_walk; piecewise: one offset an arc; calibrated: from `offsets` alone",
         default="constant",

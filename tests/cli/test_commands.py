@@ -81,6 +81,9 @@ def test_check_explain_nodes_plugins(tmp_path):
         (["run", "none.toml"], 3, "cannot be read"),
         (["check", "bad.toml"], 3, "bad.toml:2:5"),
         (["nodes", "solve.fx"], 3, "did you mean solve.fix?"),
+        (["nodes", "orbits"], 3, "did you mean orbit?"),
+        (["run", DEMO / "pipeline.toml", "--set", "nodes.text.params.name=../x"], 3, "a file in the run folder"),
+        (["verify", "."], 8, "a folder with run.json"),
         (["run", "empty_input.toml"], 4, "the file is empty"),
     ],
 )

@@ -133,6 +133,61 @@ def test_each_mistake_is_named_at_its_place(number, tmp_path, kitchen):
     assert named, str(caught.value)
 
 
+MOTION = """shiftfix = 1
+[nodes.stations]
+use = "ingest.stations"
+params.file = "s.toml"
+[nodes.log]
+use = "ingest.tdm"
+params.files = "*.tdm"
+[nodes.starts]
+use = "solve.search"
+inputs = { frequencies = "log", stations = "stations" }
+params.motion = "surface"
+params.motion_options = { legs = 2, height = "0 m +/- 5 m" }
+[nodes.fix]
+use = "solve.fix"
+inputs = { frequencies = "log", stations = "stations", starts = "starts" }
+"""
+
+
+@pytest.mark.parametrize(
+    ("old", "new", "where", "words"),
+    [
+        ('"surface"', '"surfce"', "p.toml:11:17: nodes.starts.params.motion:", "did you mean surface?"),
+        ("legs = 2", "legs = 0", "p.toml:12:34: nodes.starts.params.motion_options.legs:", "from 1 to 6"),
+        ("legs = 2", "leg = 2", "p.toml:12:27: nodes.starts.params.motion_options.leg:", "did you mean legs?"),
+        ('"0 m +/- 5 m"', "0.0", "p.toml:12:46: nodes.starts.params.motion_options.height:", "bare number"),
+        ('starts = "starts" }', 'starts = "starts" }\nparams.motion = "orbits"', "p.toml:16:17: nodes.fix.params.motion:", "orbit?"),
+    ],
+)
+def test_motions_and_their_options_are_checked_with_the_file(old, new, where, words, tmp_path):
+    path = tmp_path / "p.toml"
+    path.write_text(MOTION)
+    assert check_pipeline(path)
+    path.write_text(MOTION.replace(old, new, 1))
+    with pytest.raises(DefinitionError) as caught:
+        check_pipeline(path)
+    assert [str(p) for p in caught.value.problems if str(p).startswith(where) and words in str(p)], str(caught.value)
+    assert len(caught.value.problems) == 1
+
+
+@pytest.mark.parametrize(
+    ("given", "allowed"),
+    [
+        ({"minimum": 0.0, "unit": "Hz"}, ", 0 Hz or more"),
+        ({"maximum": 90.0, "unit": "deg"}, ", 90 deg or less"),
+        ({"minimum": 1, "maximum": 12}, ", from 1 to 12"),
+        ({"minimum": 0.5, "maximum": 1.0, "unit": "1"}, ", from 0.5 to 1"),
+        ({}, ""),
+    ],
+)
+def test_bounds_are_said_with_their_unit(given, allowed):
+    from shiftfix.graph.parameters import _bounds
+
+    assert _bounds(given) == allowed
+
+
 def test_there_are_forty_and_the_good_file_passes(tmp_path, kitchen):
     assert len(MISTAKES) >= 40
     path = tmp_path / "meal.toml"

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import click
 
-from shiftfix.cli.options import pipeline_options
+from shiftfix.cli.options import pipeline_options, toml_text
 
 
 @click.command("explain")
@@ -28,7 +28,5 @@ def command(file: str, allow: tuple[str, ...], overrides: tuple[str, ...], as_js
         for port, sources in node["inputs"].items():
             click.echo(f"   input {port}: {', '.join(sources)}")
         for p in node["params"]:
-            value = "not given" if p["value"] is None else p["value"]
-            unit = f" {p['unit']}" if p["unit"] and p["value"] is not None else ""
-            click.echo(f"   {p['name']} = {value}{unit}   [{p['origin']}]  {p['meaning']}")
+            click.echo(f"   {p['name']} = {toml_text(p['value'], p['unit'])}   [{p['origin']}]  {p['meaning']}")
     return 0

@@ -2,7 +2,9 @@
 
 from __future__ import annotations
 
+import json
 from collections.abc import Callable
+from typing import Any
 
 import click
 
@@ -23,6 +25,22 @@ set_option = click.option(
     metavar="PATH=VALUE",
     help="Override a value, as in nodes.fix.params.loss=plain; repeatable.",
 )
+
+
+def toml_text(value: Any, unit: str = "") -> str:
+    """Return a value as one writes it in a pipeline file, a quantity with its unit; `none` when it is not there."""
+    if value is None:
+        return "none"
+    if unit and not isinstance(value, list | tuple):
+        text = value if isinstance(value, str) else f"{value:.15g}"
+        return json.dumps(" +/- ".join(f"{part} {unit}" if unit != "1" else part for part in text.split(" +/- ")))
+    if isinstance(value, bool):
+        return "true" if value else "false"
+    if isinstance(value, dict):
+        return "{ " + ", ".join(f"{k} = {toml_text(v)}" for k, v in value.items()) + " }" if value else "{}"
+    if isinstance(value, list | tuple):
+        return "[" + ", ".join(toml_text(v, unit) for v in value) + "]"
+    return json.dumps(value, ensure_ascii=False) if isinstance(value, str) else f"{value:.15g}"
 
 
 def pipeline_options(function: Callable) -> Callable:

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import difflib
+import re
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, field
 from pathlib import Path
@@ -10,8 +11,9 @@ from typing import Any
 
 from shiftfix.errors import DefinitionError, PluginError, Problem
 from shiftfix.graph.build import cycle_of, run_order
+from shiftfix.graph.motions import resolve_with_motion
 from shiftfix.graph.overrides import apply_overrides, plain_values
-from shiftfix.graph.parameters import Folders, Resolved, resolve_parameters
+from shiftfix.graph.parameters import Folders, Resolved
 from shiftfix.graph.registry import RegisteredNode, Registry
 from shiftfix.tables.cautions import EMITTER_CLASSES
 from shiftfix.tables.located_toml import LocatedDocument, TomlSyntaxError, parse_located_toml
@@ -251,9 +253,10 @@ class _Reader:
         if not isinstance(params, dict):
             self.add((*here, "params"), "parameters are a table", found=repr(params), allowed="params.NAME = VALUE")
             return None
-        built, resolved, problems = resolve_parameters(
+        built, resolved, problems = resolve_with_motion(
             registered.spec.params,
             params,
+            self.registry.motions(),
             node_path=f"nodes.{name}",
             place=lambda path, key: self.where(*here, "params", *path, key=key),
             origin=lambda p: f"{self.where(*here, 'params', p)}",
@@ -393,8 +396,5 @@ def _closest(name: Any, known: Any) -> str:
 
 
 def _line(where: str) -> tuple[int, int]:
-    parts = where.split(": ")[0].split(":")
-    try:
-        return int(parts[-2]), int(parts[-1])
-    except (ValueError, IndexError):
-        return (0, 0)
+    found = re.search(r":(\d+):(\d+): ", where)
+    return (int(found[1]), int(found[2])) if found else (0, 0)

@@ -157,23 +157,13 @@ def _run_node(
             cls,
             given,
             node_path=f"nodes.{node.name}",
-            place=lambda path, key: f"params.{name}",
+            place=lambda path, key: definition.path.name,
             origin=lambda p: "",
             folders=definition.folders,
+            below=f"params.{name}",
         )
         if problems:
-            raise DefinitionError(
-                [
-                    Problem(
-                        p.where.replace(".params.", f".params.{name}.").replace(f"params.{name}: ", ""),
-                        p.what,
-                        p.found,
-                        p.allowed,
-                        p.remedy,
-                    )
-                    for p in problems
-                ]
-            )
+            raise DefinitionError(problems)
         return built
 
     context = NodeContext(

@@ -10,7 +10,7 @@ from typing import Any
 
 from shiftfix.errors import DefinitionError, Problem
 from shiftfix.graph.definition import Definition, read_definition
-from shiftfix.graph.nodes import NodeSpec, Port
+from shiftfix.graph.nodes import MotionSpec, NodeSpec, Port
 from shiftfix.graph.registry import PluginEntry, Registry
 from shiftfix.tables.quantities import Quantity
 
@@ -55,6 +55,16 @@ def describe_node(name: str, registry: Registry | None = None) -> dict[str, Any]
     }
 
 
+def describe_motion(name: str, registry: Registry | None = None) -> dict[str, Any]:
+    """Return summary and options of one motion as plain data."""
+    motions = (registry or Registry()).motions()
+    if name not in motions:
+        close = difflib.get_close_matches(name, sorted(motions), 1)
+        remedy = f"did you mean {close[0]}?" if close else "nodes are called PLUGIN.NODE"
+        raise DefinitionError(Problem(name, "no such motion", allowed=", ".join(sorted(motions)), remedy=remedy))
+    return {"name": name, "summary": motions[name].summary, "options": _params(motions[name])}
+
+
 def _ports(ports: Mapping[str, Port]) -> list[dict[str, Any]]:
     return [
         {"name": n, "table": p.table.__name__, "meaning": p.meaning, "optional": p.optional, "many": p.many}
@@ -62,7 +72,7 @@ def _ports(ports: Mapping[str, Port]) -> list[dict[str, Any]]:
     ]
 
 
-def _params(spec: NodeSpec) -> list[dict[str, Any]]:
+def _params(spec: NodeSpec | MotionSpec) -> list[dict[str, Any]]:
     out = []
     for field in dataclasses.fields(spec.params):
         required = field.default is dataclasses.MISSING and field.default_factory is dataclasses.MISSING

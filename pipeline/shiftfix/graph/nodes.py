@@ -48,6 +48,7 @@ def param(
     choices: tuple[str, ...] = (),
     sigma: bool = False,
     path: str = "",
+    motion: str = "",
 ) -> Any:
     """Declare one parameter of a node: a dataclass field with meaning, unit, bounds and default.
 
@@ -69,6 +70,9 @@ def param(
     path : {"", "file", "files"}
         Marks a path (confined to the pipeline's folder and --allow folders): "file" gives a `Path`, "files" a pattern or
         list of patterns that gives a sorted tuple of `Path`.
+    motion : {"", "name", "options"}
+        "name" marks the name of a motion that a plugin offers; "options" a table of that motion's own parameters. Both are
+        checked with the pipeline file, before anything runs.
     """
     metadata = {
         "meaning": meaning,
@@ -78,6 +82,7 @@ def param(
         "choices": choices,
         "sigma": sigma,
         "path": path,
+        "motion": motion,
     }
     if default is dataclasses.MISSING:
         return field(metadata=metadata)

@@ -53,6 +53,7 @@ def resolve_parameters(
     place: Callable[[tuple, bool], str],
     origin: Callable[[str], str],
     folders: Folders,
+    below: str = "params",
 ) -> tuple[Any, tuple[Resolved, ...], list[Problem]]:
     """Return the parameter object (None when there are problems), how each value came about, and all problems.
 
@@ -69,6 +70,8 @@ def resolve_parameters(
     origin : callable
         `origin(name) -> text` for a value that was given.
     folders : Folders
+    below : str
+        Path of the table below the node, for messages.
     """
     fields = {f.name: f for f in dataclasses.fields(cls)}
     hints = typing.get_type_hints(cls)
@@ -80,7 +83,7 @@ def resolve_parameters(
             close = difflib.get_close_matches(name, fields, 1)
             problems.append(
                 Problem(
-                    f"{place((name,), True)}: {node_path}.params.{name}",
+                    f"{place((name,), True)}: {node_path}.{below}.{name}",
                     "unknown parameter",
                     found=name,
                     allowed=", ".join(fields) or "none: this node has no parameters",
@@ -94,10 +97,10 @@ def resolve_parameters(
             if field.default is dataclasses.MISSING and field.default_factory is dataclasses.MISSING:
                 problems.append(
                     Problem(
-                        f"{place((), False)}: {node_path}.params.{name}",
+                        f"{place((), False)}: {node_path}.{below}.{name}",
                         "required parameter is missing",
                         allowed=_allowed(meta, hints[name]),
-                        remedy=f"add params.{name} ({meta.get('meaning', '')})",
+                        remedy=f"add {below}.{name} ({meta.get('meaning', '')})",
                     )
                 )
                 continue
@@ -111,7 +114,7 @@ def resolve_parameters(
         except _Bad as bad:
             problems.append(
                 Problem(
-                    f"{place((name, *bad.path), False)}: {'.'.join([node_path, 'params', name, *map(str, bad.path)])}",
+                    f"{place((name, *bad.path), False)}: {'.'.join([node_path, below, name, *map(str, bad.path)])}",
                     bad.what,
                     found=bad.found,
                     allowed=bad.allowed or _allowed(meta, hints[name]),
@@ -123,7 +126,7 @@ def resolve_parameters(
     try:
         return cls(**values), tuple(resolved), []
     except ValueError as error:
-        return None, tuple(resolved), [Problem(f"{place((), False)}: {node_path}.params", str(error))]
+        return None, tuple(resolved), [Problem(f"{place((), False)}: {node_path}.{below}", str(error))]
 
 
 class _Bad(Exception):
@@ -155,9 +158,14 @@ def _allowed(meta: Mapping[str, Any], hint: Any) -> str:
 
 def _bounds(meta: Mapping[str, Any]) -> str:
     low, high = meta.get("minimum"), meta.get("maximum")
+    unit = f" {meta['unit']}" if meta.get("unit", "1") not in ("", "1") else ""
     if low is None and high is None:
         return ""
-    return f", from {low if low is not None else '-inf'} to {high if high is not None else 'inf'} {meta.get('unit', '')}".rstrip()
+    if high is None:
+        return f", {low:g}{unit} or more"
+    if low is None:
+        return f", {high:g}{unit} or less"
+    return f", from {low:g} to {high:g}{unit}"
 
 
 def _plain(hint: Any) -> Any:

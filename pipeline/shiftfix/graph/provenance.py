@@ -96,7 +96,10 @@ def verify_run(folder: str | Path) -> dict[str, Any]:
         record = json.loads(content)
         sealed = (folder / SEAL).read_text()
     except (OSError, ValueError) as error:
-        raise VerificationError(Problem(str(folder), "not a readable run folder", found=str(error))) from error
+        found = getattr(error, "strerror", None) or str(error)
+        raise VerificationError(
+            Problem(str(folder), "not a readable run folder", found=found, allowed=f"a folder with {RECORD} and {SEAL}")
+        ) from error
     if sealed != f"{sha256(content)}  {RECORD}\n":
         raise VerificationError(
             Problem(

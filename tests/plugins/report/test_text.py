@@ -6,6 +6,7 @@ The files are regression values; after a wanted change write them anew with `pyt
 from __future__ import annotations
 
 from pathlib import Path
+from types import SimpleNamespace
 
 import numpy as np
 import pandas as pd
@@ -192,6 +193,21 @@ def test_files_and_reasons_are_counted():
     line = next(line for line in text.splitlines() if line.strip().startswith("a,b.csv"))
     assert line.split()[-3:] == ["1", "0", "1"]
     assert "left out: 1 x no calibration of this station" in text
+
+
+@pytest.mark.parametrize("name", ["", ".x", "/x", "../x", "a/../../x", "a\\b"])
+def test_a_product_stays_in_the_run_folder(name):
+    from shiftfix_report.plugin import TextParams, shiftfix_nodes
+
+    from shiftfix.api import DefinitionError
+
+    kept = {}
+    context = SimpleNamespace(node="text", title="t", emitter_classes=(), write=kept.__setitem__)
+    node = next(n for n in shiftfix_nodes() if n.name == "text")
+    with pytest.raises(DefinitionError, match="nodes.text.params.name: not the name of a file"):
+        node.function({"solution": solution()}, TextParams(name=name), context)
+    node.function({"solution": solution()}, TextParams(name="night/one.txt"), context)
+    assert list(kept) == ["night/one.txt"]
 
 
 def test_residuals_have_every_row_with_file_and_line():
