@@ -197,9 +197,8 @@ def test_files_and_reasons_are_counted():
 
 @pytest.mark.parametrize("name", ["", ".x", "/x", "../x", "a/../../x", "a\\b"])
 def test_a_product_stays_in_the_run_folder(name):
-    from shiftfix_report.plugin import TextParams, shiftfix_nodes
-
     from shiftfix.api import DefinitionError
+    from shiftfix_report.plugin import TextParams, shiftfix_nodes
 
     kept = {}
     context = SimpleNamespace(node="text", title="t", emitter_classes=(), write=kept.__setitem__)
