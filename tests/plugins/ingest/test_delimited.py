@@ -376,6 +376,8 @@ def test_a_last_line_that_is_cut_off_is_not_taken(tmp_path):
     result = run(tmp_path, lines=whole[:-3])
     assert "log.csv:9" in str(result.error) and "the file looks truncated" in str(result.error)
     assert run(tmp_path, lines=whole[:-3] + b"\n").error is None
+    four = ("t,f\n" + "\n".join(LINES[:4])).encode()[:-3]
+    assert "the file looks truncated" in str(run(tmp_path, lines=four).error)
 
 
 @pytest.mark.parametrize("mode", ["refuse", "reject"])
@@ -395,6 +397,7 @@ def test_only_the_first_rows_are_listed_and_the_rest_counted(tmp_path):
     problems = run(tmp_path, lines=lines).error.problems
     assert len(problems) == 21 and problems[0].where == "log.csv:62"
     assert "7 more unusable rows" in str(problems[-1]) and 'on_bad_row = "reject"' in problems[-1].remedy
+    assert "log.csv: unusable rows: 20" in str(run(tmp_path, lines=lines[:80]).error)
 
 
 def test_content_of_one_file_is_reported_beside_the_absence_of_another(tmp_path):

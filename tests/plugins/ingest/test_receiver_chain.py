@@ -63,6 +63,7 @@ def test_no_chain_is_no_change():
         ([{"lo": 10}], "converter 1: lo: bare number 10"),
         ([{"lo": "10 ms"}], "a quantity in s"),
         ([{"lo": "-10 MHz"}], "greater than 0"),
+        ([{"lo": "0 Hz"}], "greater than 0"),
         (["10 MHz"], "converter 1: found '10 MHz'"),
         ("10 MHz", "allowed: a list of converters"),
         ({"lo": "10 MHz"}, "allowed: a list of converters"),
@@ -165,3 +166,15 @@ def test_chain_of_the_parameters_goes_before_that_of_the_book(tmp_path):
     book = BOOK.format(id="ORREL") + 'chain = [{ lo = "148 MHz" }]\n'
     result = run(tmp_path, rows(SKY - 149e6), 'params.chain = [{ lo = "149 MHz" }]\n', book=book)
     assert np.allclose(received(result), SKY, rtol=0.0, atol=1e-6)
+
+
+def test_a_book_without_any_chain_is_no_chain(tmp_path):
+    result = run(tmp_path, rows(SKY - 148e6), book=BOOK.format(id="ORREL"))
+    assert result.exit_code == 4 and "a tone needs the receiver chain" in str(result.error)
+
+
+def test_a_dial_needs_no_chain_in_the_book(tmp_path):
+    extra = 'params.dial = "158.302 MHz"\nparams.sideband = "lower"\n'
+    book = BOOK.format(id="ORREL") + BOOK.format(id="QUOIN") + 'chain = [{ lo = "148 MHz" }]\n'
+    found = received(run(tmp_path, rows(158302000.0 - SKY), extra, book=book))
+    assert np.allclose(found, SKY, rtol=0.0, atol=1e-6)

@@ -33,7 +33,7 @@ def test_the_reason_names_the_remedy():
     assert why_no_number("") == "is empty"
     assert 'say decimal = ","' in why_no_number("1,5")
     assert "has a point" in why_no_number("1.5", ",") and np.isnan(numbers(array("1.5"), ",")[0])
-    assert why_no_number("abc") == "is not a finite number: 'abc'"
+    assert why_no_number("abc") == why_no_number("abc", ",") == "is not a finite number: 'abc'"
 
 
 def test_posix_counts_skip_leap_seconds():
@@ -86,6 +86,7 @@ def test_the_leap_second_itself_is_read():
         ("", "time is empty"),
         ("inf", "not a finite number"),
         ("1e300", "too large for a count"),
+        ("9500000000", "too large for a count"),
         ("1e999999999", "not a finite number"),
         ("63071999", "before 1972"),
         ("12:00:00", "not a finite number"),
