@@ -475,6 +475,10 @@ DECLARATIONS = {
         'params.time_scale = "TAI"\nparams.time_format = "posix"\n',
         "counts UTC days of 86400 s",
     ),
+    'time_scale = "UTC"\n': (
+        'time_scale = "UTC"\nparams.unmarked_utc = true\nparams.time_format = "posix"\n',
+        "only for UTC texts",
+    ),
     'units = { frequency = "Hz"': ('units = { frequency = "Hz", sigma = "Hz"', "which is not declared"),
 }
 
@@ -518,3 +522,30 @@ def test_sigmas_that_no_log_has(tmp_path):
     rows = [f"{x},0.5" for x in LINES]
     result = run_wide(tmp_path, "t,f,s", rows, 'sigma = "s"', ', sigma = "MHz"')
     assert result.exit_code == 4 and "1-sigmas are too large for their unit" in str(result.error)
+
+
+def test_short_intervals_need_a_tag_too(tmp_path):
+    run(tmp_path)
+    text = (tmp_path / "p.toml").read_text().replace('"10 s"', '"0.5 s"').replace('params.time_tag = "middle"\n', "")
+    (tmp_path / "p.toml").write_text(text)
+    assert "counts over an interval without time_tag" in str(run_pipeline(tmp_path / "p.toml").error)
+    (tmp_path / "p.toml").write_text(text.replace('"0.5 s"', '"0 s"'))
+    assert run_pipeline(tmp_path / "p.toml").error is None
+
+
+def test_a_declared_separator_goes_before_the_one_that_is_found(tmp_path):
+    lines = [x.replace(",", "|") + ";rest" for x in LINES]
+    result = run(tmp_path, lines=lines, head="t|f;note", extra='params.separator = "|"\n')
+    assert "no column 'f' for frequency" in str(result.error) and "f;note" in str(result.error)
+
+
+def test_neighbouring_bands_in_one_log_are_no_mistake(tmp_path):
+    """Without a nominal frequency only powers of a thousand are suspicious, not another carrier."""
+    run(tmp_path, lines=[*LINES, "2026-03-01T13:00:00Z,225000000", "2026-03-01T13:01:00Z,98100000"])
+    text = (tmp_path / "p.toml").read_text().replace('params.nominal_frequency = "158.3 MHz"\n', "")
+    (tmp_path / "p.toml").write_text(text)
+    assert run_pipeline(tmp_path / "p.toml").error is None
+    (tmp_path / "log.csv").write_text((tmp_path / "log.csv").read_text().replace(",225000000", ",225000"))
+    assert run_pipeline(tmp_path / "p.toml").error is None
+    (tmp_path / "log.csv").write_text((tmp_path / "log.csv").read_text().replace(",225000", ",160000"))
+    assert "log.csv:10: frequency 160000 Hz is 0.00101 times" in str(run_pipeline(tmp_path / "p.toml").error)

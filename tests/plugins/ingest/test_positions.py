@@ -172,3 +172,41 @@ def test_one_mover_in_two_ephemerides_is_refused_where_it_is_used(tmp_path):
     assert "book.toml:2:9: stations.SHIP.track: several connected ephemerides hold this track" in str(both.error)
     one = run(tmp_path, text=text + 'inputs.ephemeris = ["more"]\n')
     assert len(one.tables["s.stations"].ephemerides["SHIP"]) == 8
+
+
+XYZ = PIPELINE.replace(
+    'latitude = "lat", longitude = "lon", height = "h"', 'object = "o", x = "x", y = "y", z = "z"'
+).replace('params.height_kind = "ellipsoid"\n', "")
+
+
+def test_movers_are_apart_and_high_ones_may_be_fast(tmp_path):
+    """Two ships 90 degrees apart do not jump; a body at 40 000 km in the rotating frame may pass 12 km/s."""
+    rows = [
+        f"2026-03-01T12:0{k}:00Z,{o},{x},{y},10000"
+        for k in range(3)
+        for o, x, y in (("A", 6.37e6, 0), ("B", 0, 6.37e6))
+    ]
+    assert len(run(tmp_path, rows, "utc,o,x,y,z", XYZ).tables["track.ephemeris"]) == 6
+    rows = [f"2026-03-01T12:0{k}:00Z,A,4e7,{k * 15e3 * 60},10000" for k in range(3)]
+    assert len(run(tmp_path, rows, "utc,o,x,y,z", XYZ).tables["track.ephemeris"]) == 3
+    rows[2] = "2026-03-01T12:02:00Z,A,6.37e6,0,10000"
+    assert len(run(tmp_path, rows, "utc,o,x,y,z", XYZ).tables["track.ephemeris"]) == 3
+    rows = [f"2026-03-01T12:0{k}:00Z,A,6.37e6,{k * 11e3 * 60 / 10},10000" for k in range(3)]
+    assert run(tmp_path, rows, "utc,o,x,y,z", XYZ).error is None
+
+
+def test_counts_as_times(tmp_path):
+    wanted = states(run(tmp_path))
+    rows = [f"{1772366400000 + 60000 * k}{r[20:]}" for k, r in enumerate(ROWS)]
+    text = PIPELINE + 'params.time_format = "posix"\nparams.units = { time = "ms" }\n'
+    assert np.allclose(states(run(tmp_path, rows, text=text)), wanted, rtol=0.0, atol=1e-6)
+    wrong = run(tmp_path, rows, text=text.replace('"ms"', '"weeks"'))
+    assert "found 'weeks'; allowed: s, ms, us, ns" in str(wrong.error)
+    rows = [f"2408,{43218 + 60 * k}{r[20:]}" for k, r in enumerate(ROWS)]
+    text = PIPELINE.replace("{ time", '{ week = "w", time').replace('"UTC"', '"GPS"') + 'params.time_format = "gps"\n'
+    assert np.allclose(states(run(tmp_path, rows, "w," + HEAD, text)), wanted, rtol=0.0, atol=1e-6)
+
+
+def test_only_the_first_rows_are_listed(tmp_path):
+    problems = run(tmp_path, [r.replace("15.5", "x") for r in ROWS * 3]).error.problems
+    assert len(problems) == 21 and "4 more unusable rows" in str(problems[-1])

@@ -55,6 +55,9 @@ def test_positions_and_priors(tmp_path):
 GEODETIC = GOOD.split("[stations.B]")[0]
 MISTAKES = [
     ('"-38.91 deg"', '"38.91 W"', "book.toml:2:12: stations.A.latitude", "are latitude and longitude swapped?"),
+    ('"-23.12 deg"', '"360.5 deg"', "book.toml:3:13: stations.A.longitude", "longitude out of range"),
+    ('"31 m"', '"-600 m"', "book.toml:4:10: stations.A.height", "height out of range"),
+    (GEODETIC, "stations = 5\n", "book.toml:1:12: stations", "the book has no stations"),
     ('"-23.12 deg"', '"-181 deg"', "book.toml:3:13: stations.A.longitude", "longitude out of range"),
     ('"12 m"', '"1200 m"', "book.toml:6:14: stations.A.undulation", "undulation out of range"),
     ('"sea level"', '"ellipsoid"', "book.toml:6:14: stations.A.undulation", "beside a height above the ellipsoid"),
@@ -144,6 +147,7 @@ def test_clashing_ids_are_refused_unless_their_validity_differs(tmp_path):
     assert len(read(tmp_path, first + one).tables["s.stations"]) == 2
     touching = first.replace("2025-12-31T23:59:59Z", "2026-01-01T00:00:00Z")
     assert len(read(tmp_path, touching + one).tables["s.stations"]) == 2
+    assert len(read(tmp_path, one + touching).tables["s.stations"]) == 2
     overlapping = first.replace("2025-12-31T23:59:59Z", "2026-01-01T00:00:01Z")
     assert "clashes with the entry" in str(read(tmp_path, overlapping + one).error)
 
@@ -194,6 +198,51 @@ def test_plate_motion_and_its_epoch(tmp_path):
     assert table.array("position_epoch_tai_ns")[1] == (16436 * 86400 + 35) * 10**9
 
 
+@pytest.mark.parametrize(("field", "axis"), [("antenna_east", 0), ("antenna_north", 1), ("antenna_up", 2)])
+def test_antenna_offset_away_from_the_axes(tmp_path, field, axis):
+    """The offset lies along the derivative of the position with longitude, latitude or height."""
+    before, after = (read(tmp_path, t).tables["s.stations"] for t in (GEODETIC, GEODETIC + f'{field} = "7 m"\n'))
+    shift = np.array([after.array(c)[0] - before.array(c)[0] for c in ("x_m", "y_m", "z_m")])
+    place, step = np.array([np.radians(-38.91), np.radians(-23.12), 43.0]), np.zeros(3)
+    step[(1, 0, 2)[axis]] = (1e-6, 1e-6, 10.0)[axis]
+    direction = itrs_from_geodetic(*(place + step)) - itrs_from_geodetic(*(place - step))
+    assert shift == pytest.approx(7.0 * direction / np.linalg.norm(direction), abs=1e-6)
+
+
+CLASSES = {
+    "bare-crystal": (5e-5, 1e-9),
+    "tcxo": (1e-6, 1e-11),
+    "ocxo": (5e-8, 1e-14),
+    "double-oven-ocxo": (1e-8, 1e-15),
+    "rubidium": (1e-9, 1e-17),
+    "gnss-disciplined": (1e-11, 0.0),
+    "hydrogen-maser": (1e-13, 0.0),
+}
+
+
+@pytest.mark.parametrize("kind", CLASSES)
+def test_what_each_class_of_oscillator_is_worth(tmp_path, kind):
+    """Common practice: accuracy after warm-up 2e-5..1e-4, 0.5..2e-6, 5e-8, 1e-8, 1e-9 and 1e-12..1e-11 in this order."""
+    table = read(tmp_path, GEODETIC.replace('"ocxo"', f'"{kind}"')).tables["s.stations"]
+    assert (table.array("offset_sigma_1")[0], table.array("drift_sigma_1_s")[0]) == CLASSES[kind]
+
+
+@pytest.mark.parametrize(
+    ("kind", "sigma"), [("gnss", 1e-6), ("pps", 1e-4), ("ntp", 0.02), ("hand", 0.5), ("manual", 0.5)]
+)
+def test_what_each_class_of_clock_is_worth(tmp_path, kind, sigma):
+    """Common practice: pulse per second 1 us to 1 ms, network time 5 to 50 ms, by hand 0.5 s."""
+    table = read(tmp_path, GEODETIC.replace('"ntp"', f'"{kind}"')).tables["s.stations"]
+    assert table.array("time_sigma_s")[0] == sigma
+
+
+def test_what_is_not_said_is_unknown_and_wide(tmp_path):
+    text = GEODETIC.replace('reference = "ocxo"\n', "").replace('position_sigma = "5 m"\n', "")
+    table = read(tmp_path, text).tables["s.stations"]
+    assert np.isinf(table.array("offset_sigma_1")[0]) and table.array("reference_class")[0] == "unknown"
+    assert table.array("position_sigma_m")[0] == 10.0
+
+
 def test_antenna_offsets_east_north_and_up(tmp_path):
     """At longitude 0 on the equator east, north and up are y, z and x."""
     text = GEODETIC.replace('"-38.91 deg"', '"0 deg"').replace('"-23.12 deg"', '"0 deg"')
@@ -228,6 +277,8 @@ def test_moving_station_needs_an_id_of_its_own(tmp_path):
         PIPELINE + 'inputs.ephemeris = "track"\n[nodes.track]\nuse = "ingest.positions"\nparams.files = "track.csv"\n'
         'params.object = "cutter"\nparams.time_scale = "UTC"\nparams.columns = { time = "t", x = "x", y = "y", z = "z" }\n'
     )
+    assert "one of the two moves" in str(run_pipeline(tmp_path / "p.toml").error)
+    (tmp_path / "book.toml").write_text(text[len(one) :] + one)
     assert "one of the two moves" in str(run_pipeline(tmp_path / "p.toml").error)
 
 
