@@ -2,11 +2,16 @@
 
 from __future__ import annotations
 
+import os
 import sys
 from dataclasses import dataclass, field
 from pathlib import Path
 
 import pytest
+
+# As the command line does (one_thread in shiftfix.cli.main), before numpy is imported: workers of xdist share the cores.
+if not {"OMP_NUM_THREADS", "OPENBLAS_NUM_THREADS", "MKL_NUM_THREADS"} & set(os.environ):
+    os.environ.update(OMP_NUM_THREADS="1", OPENBLAS_NUM_THREADS="1", MKL_NUM_THREADS="1")
 
 sys.path.insert(0, str(Path(__file__).parent / "support"))
 

@@ -13,6 +13,7 @@ from pathlib import Path
 import pytest
 
 from shiftfix.api import cautions_for
+from shiftfix.cli.main import one_thread
 from shiftfix.cli.summary import summary_lines
 from shiftfix.tables.cautions import EMITTER_CLASSES
 
@@ -110,6 +111,21 @@ def test_help_loads_nothing_heavy(tmp_path):
     assert "Exit codes" in answer.stdout
     for name in ("run", "check", "explain", "nodes", "plugins", "verify"):
         assert shiftfix(name, "--help", cwd=tmp_path).returncode == 0
+
+
+def test_linear_algebra_has_one_thread_unless_the_user_says_otherwise(tmp_path):
+    given = {"PATH": "x"}
+    one_thread(given)
+    assert given["OPENBLAS_NUM_THREADS"] == given["OMP_NUM_THREADS"] == "1"
+    for name in ("OMP_NUM_THREADS", "MKL_NUM_THREADS"):
+        own = {name: "4"}
+        one_thread(own)
+        assert own == {name: "4"}
+    bare = {k: v for k, v in os.environ.items() if not k.endswith("_NUM_THREADS")}
+    code = "import sys; sys.argv=['shiftfix','--help']\nfrom shiftfix.cli.main import main\n"
+    code += "try: main()\nexcept SystemExit: pass\nimport os; print(os.environ['OPENBLAS_NUM_THREADS'])"
+    answer = subprocess.run([sys.executable, "-c", code], capture_output=True, text=True, cwd=tmp_path, env=bare)
+    assert answer.stdout.splitlines()[-1] == "1", answer.stderr
 
 
 def test_interrupt_leaves_a_partial_run_that_verifies(tmp_path):
