@@ -43,6 +43,6 @@ def _check(kind: str, wanted, present) -> None:
     if missing:
         raise InputError(
             Problem(
-                "frequencies", f"no row of {kind} {missing[0]!r}", allowed=", ".join(sorted(set(present))) or "none"
+                "frequencies", f"no row of {kind} {', '.join(map(repr, missing))}", allowed=", ".join(sorted(set(present))) or "none"
             )
         )

@@ -84,6 +84,7 @@ def test_check_explain_nodes_plugins(tmp_path):
         (["nodes", "solve.fx"], 3, "did you mean solve.fix?"),
         (["nodes", "orbits"], 3, "did you mean orbit?"),
         (["run", DEMO / "pipeline.toml", "--set", "nodes.text.params.name=../x"], 3, "a file in the run folder"),
+        (["run", DEMO / "pipeline.toml", "--out", "bad.toml/run"], 2, "bad.toml/run cannot be written: Not a directory"),
         (["verify", "."], 8, "a folder with run.json"),
         (["run", "empty_input.toml"], 4, "the file is empty"),
     ],

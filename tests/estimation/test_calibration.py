@@ -42,7 +42,7 @@ def orbiting_look(offset, seed):
 
 
 def test_offset_of_1e9_is_recovered_within_2e10():
-    """1 Hz noise at 437 MHz, 300 values: 1-sigma 1.3e-10; without time dilation 3e-10 would leak in (row 28)."""
+    """1 Hz noise at 437 MHz, 300 values: 1-sigma 1.3e-10; without time dilation 3e-10 would leak in."""
     errors = []
     for seed in range(20):
         t, rate, sigma = orbiting_look(1e-9, seed)

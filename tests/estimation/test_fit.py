@@ -91,7 +91,7 @@ def test_keep_all_restores_every_row(scene):
 
 
 def test_step_of_the_transmitter_is_modelled(scene):
-    """A 10 Hz step in mid-pass, its time known: the error stays within 1.3 of the scene without it (row 64)."""
+    """A 10 Hz step in mid-pass, its time known: the error stays within 1.3 of the scene without it."""
     plain, stepped, ignored = [], [], []
     for seed in range(25):
         rows, _ = scene.draw(seed)
@@ -106,7 +106,7 @@ def test_step_of_the_transmitter_is_modelled(scene):
 
 
 def test_long_counts_are_averaged_exactly():
-    """Counts of 60 s fit as well as 1 s data: bias below 0.05 sigma (row 48)."""
+    """Counts of 60 s fit as well as 1 s data: bias below 0.05 sigma."""
     earth, _, _ = make_earth(1200.0)
     scene = leo_pass()
     satellite = worldline.over(earth, -41.2, -26.4, 510e3, -9.9, span=700.0)
@@ -211,7 +211,7 @@ def test_emitter_at_rest_is_not_locatable():
 
 
 def test_random_walk_of_the_stations_is_covered():
-    """Station oscillators that walk: with the walk in the model the 95 % region holds (row 29)."""
+    """Station oscillators that walk: with the walk in the model the 95 % region holds."""
     scene = leo_pass()
     walk = 2e-10
     clocks = ClockModels(station="random_walk", station_walk=walk, datum="auto")

@@ -44,7 +44,7 @@ def test_whitening_is_the_inverse_factor_of_the_true_covariance():
 
 
 def test_phase_differences_equal_phases_with_one_constant():
-    """Estimates from differenced phases with their covariance equal those from the phases themselves (design, 10)."""
+    """Estimates from differenced phases with their covariance equal those from the phases themselves."""
     random = np.random.default_rng(3)
     n = 60
     t = np.arange(n + 1.0)

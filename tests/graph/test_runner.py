@@ -8,7 +8,16 @@ import threading
 import pytest
 import recipes
 
-from shiftfix.api import NodeError, PluginError, Registry, VerificationError, list_plugins, run_pipeline, verify_run
+from shiftfix.api import (
+    DefinitionError,
+    NodeError,
+    PluginError,
+    Registry,
+    VerificationError,
+    list_plugins,
+    run_pipeline,
+    verify_run,
+)
 
 MEAL = """shiftfix = 1
 title = "Soup"
@@ -105,6 +114,13 @@ def test_input_changed_in_place_is_refused_or_impossible(meal, kitchen, tmp_path
     result = run_pipeline(meal(MEAL + 'params.misdeed = "change"\n'), out=tmp_path / "run", registry=kitchen)
     # pandas' copy-on-write refuses the write itself, or the fingerprint shows it: either way the node fails.
     assert isinstance(result.error, NodeError)
+
+
+def test_two_nodes_that_make_one_product_are_told_to_the_user(meal, kitchen):
+    text = MEAL + '[nodes.again]\nuse = "kitchen.serve"\ninputs.dish = "soup"\n'
+    result = run_pipeline(meal(text), registry=kitchen)
+    assert isinstance(result.error, DefinitionError) and result.exit_code == 3
+    assert "nodes.again: node 'menu' made a product called 'menu.txt' already" in str(result.error)
 
 
 def test_products_stay_in_the_run_folder(meal, kitchen, tmp_path):

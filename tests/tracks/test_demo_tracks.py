@@ -89,7 +89,7 @@ def test_vessel_with_a_turn():
 
 
 def test_earth_orientation_ends_somewhere(tmp_path):
-    """A pass after the end of the table is refused with exit 4; the degraded mode runs and says what it costs (row 14)."""
+    """A pass after the end of the table is refused with exit 4; the degraded mode runs and says what it costs."""
     for name in ("stations.toml", "orrel_head.csv", "quoin_skerry.txt", "bastle_fen.tdm"):
         content = (DEMO / "tamsin_pass" / name).read_text().replace("2026-03-0", "2033-03-0")
         (tmp_path / name).write_text(content)

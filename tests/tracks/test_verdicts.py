@@ -92,7 +92,7 @@ def test_beacon_heard_by_a_low_orbiter(tmp_path, off_track_deg, half_s, code):
 
 
 def test_aircraft_without_height_has_a_mirror_below():
-    """Six ground stations: without a height prior a second answer lies some 20 km lower; a prior decides (design, 10)."""
+    """Six ground stations: without a height prior a second answer lies some 20 km lower; a prior decides."""
     import shiftfix_solve.motions as motions
     from shiftfix_solve.options import PolynomialOptions
 
@@ -114,3 +114,18 @@ def test_aircraft_without_height_has_a_mirror_below():
         ]
         assert min(distances) < 1000.0
         assert (max(distances) > 15e3) == (verdict == "ambiguous")
+
+
+def test_a_station_that_is_not_in_the_book_is_named_plainly(tmp_path):
+    (tmp_path / "stations.toml").write_text(
+        '[stations.NORTH]\nlatitude = "-41 deg"\nlongitude = "-26 deg"\nheight = "9 m"\nheight_kind = "ellipsoid"\n'
+        'datum = "WGS84"\noffset = "0 +/- 1e-9"\nclock = "pps"\nposition_sigma = "3 m"\n'
+    )
+    (tmp_path / "log.csv").write_text("t,f\n2026-03-01T12:00:00Z,437000000.5\n2026-03-01T12:00:09Z,437000001.5\n")
+    text = BEACON.replace("PETREL-A", "NORHT")
+    start, stop = text.index("[nodes.track]"), text.index("[nodes.stations]")
+    (tmp_path / "p.toml").write_text(text[:start] + text[stop:].replace('inputs.ephemeris = ["track"]\n', ""))
+    result = run_pipeline(tmp_path / "p.toml")
+    assert result.exit_code == 4
+    assert "log.csv:2: station 'NORHT' is not in the station book" in str(result.error)
+    assert "did you mean NORTH?" in str(result.error)

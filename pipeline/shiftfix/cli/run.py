@@ -52,8 +52,13 @@ def command(
             ),
         )
     show = observer(sys.stderr, quiet)
-    with show:
-        result = run_pipeline(file, out=folder, allow=allow, overrides=overrides, seed=seed, on_event=show)
+    try:
+        with show:
+            result = run_pipeline(file, out=folder, allow=allow, overrides=overrides, seed=seed, on_event=show)
+    except OSError as error:
+        # Input files are opened inside nodes, which wrap their errors: what comes here is the run folder.
+        text = f"the run folder {folder} cannot be written: {error.strerror or error}"
+        raise click.BadParameter(text, param_hint="--out") from error
     if not quiet:
         for warning in result.warnings:
             click.echo(f"warning: {warning}", err=True)

@@ -101,7 +101,7 @@ def station_entries(
             problems.append(
                 Problem(
                     where(int(np.flatnonzero(station_ids == name)[0])),
-                    f"station {name!r} is not in the station book",
+                    f"station '{name}' is not in the station book",
                     allowed=", ".join(known),
                     remedy=f"did you mean {close[0]}?" if close else "add it to the station book",
                 )

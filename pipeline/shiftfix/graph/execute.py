@@ -145,8 +145,18 @@ def _run_node(
         if not name or name.startswith(("/", ".")) or ".." in Path(name).parts or "\\" in name:
             raise NodeError(Problem(where, "a product must have a plain relative name", found=name))
         content = data.encode("utf-8") if isinstance(data, str) else bytes(data)
+        if name in record.products:
+            raise NodeError(Problem(where, f"the node made a product called {name!r} twice"))
         if name in out.products:
-            raise NodeError(Problem(where, f"a product called {name!r} exists already"))
+            maker = next(r.name for r in out.records.values() if name in r.products)
+            raise DefinitionError(
+                Problem(
+                    f"nodes.{node.name}",
+                    f"node {maker!r} made a product called {name!r} already",
+                    found=node.registered.qualified_name,
+                    remedy="give one of them another name, as with params.name",
+                )
+            )
         out.products[name] = content
         record.products[name] = hashlib.sha256(content).hexdigest()
         if folder is not None:

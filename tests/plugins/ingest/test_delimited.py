@@ -75,7 +75,7 @@ def test_encodings_separators_and_gzip_give_the_same_rows(tmp_path):
 
 
 def test_three_tag_conventions_and_a_delay_give_one_table(tmp_path):
-    """The same counts tagged at start, middle and end, and late by a known delay, are the same observations (row 17)."""
+    """The same counts tagged at start, middle and end, and late by a known delay, are the same observations."""
     reference = run(tmp_path).tables["log.frequencies"].array("time_tai_ns")
     for tag, shift in (("start", -5.0), ("end", 5.0)):
         moved = [f"2026-03-01T{_clock(60 * k + 0.5 + shift)}Z,{158300000 + k}.25" for k in range(8)]
