@@ -506,6 +506,7 @@ SIZES = {
     "frequencies as offsets": ('params.frequency_kind = "offset"\n', "Hz", [158300000.0] * 8, "not near the nominal"),
     "megahertz as kilohertz": ("", "kHz", [158.3] * 8, "is the column in MHz?"),
     "megahertz as gigahertz": ("", "GHz", [158.3] * 8, "1000 times too large: is the column in MHz?"),
+    "a higher channel": ("", "MHz", [200.0] * 8, "not near the nominal frequency"),
     "another channel": ("", "MHz", [98.1] * 8, "not near the nominal frequency"),
 }
 
@@ -549,3 +550,41 @@ def test_neighbouring_bands_in_one_log_are_no_mistake(tmp_path):
     assert run_pipeline(tmp_path / "p.toml").error is None
     (tmp_path / "log.csv").write_text((tmp_path / "log.csv").read_text().replace(",225000", ",160000"))
     assert "log.csv:10: frequency 160000 Hz is 0.00101 times" in str(run_pipeline(tmp_path / "p.toml").error)
+
+
+def test_intervals_in_a_column(tmp_path):
+    rows = [f"{x},{0.5 if k else 0}" for k, x in enumerate(LINES)]
+    result = run_wide(tmp_path, "t,f,i", rows, 'interval = "i"', ', interval = "s"')
+    assert result.tables["log.frequencies"].array("interval_s").tolist() == [0.0] + [0.5] * 7
+    rows[4] = f"{LINES[4]},-0.5"
+    result = run_wide(tmp_path, "t,f,i", rows, 'interval = "i"', ', interval = "s"')
+    assert "log.csv:6: interval is negative: -0.5 s" in str(result.error)
+
+
+def test_posix_counts_in_their_unit(tmp_path):
+    reference = run(tmp_path).tables["log.frequencies"].array("time_tai_ns")
+    lines = [f"{1772366400500 + 60000 * k},{158300000 + k}.25" for k in range(8)]
+    run(tmp_path, lines=lines, extra='params.time_format = "posix"\n')
+    text = (tmp_path / "p.toml").read_text()
+    for unit, good in (("ms", True), ("h", False)):
+        (tmp_path / "p.toml").write_text(text.replace('"Hz" }', f'"Hz", time = "{unit}" }}'))
+        result = run_pipeline(tmp_path / "p.toml")
+        if good:
+            assert np.array_equal(result.tables["log.frequencies"].array("time_tai_ns"), reference)
+        else:
+            assert "nodes.log.params.units.time: not a unit of a count" in str(result.error)
+    (tmp_path / "p.toml").write_text(text.replace('"Hz" }', '"Hz", time = "ms" }').replace("posix", "iso"))
+    assert "nodes.log.params.units.time: a unit for a role that has none" in str(
+        run_pipeline(tmp_path / "p.toml").error
+    )
+
+
+def test_spacing_is_that_of_one_emitter_at_one_station(tmp_path):
+    """Two stations, two emitters, counts of 10 s back to back, those of one pair between those of the other."""
+    rows = [
+        f"2026-03-01T12:00:{10 * k + late:02d}Z,158300000,{s},{e}"
+        for s, e, late in (("A", "x", 0), ("B", "y", 5), ("A", "y", 2), ("B", "x", 7))
+        for k in range(5)
+    ]
+    result = run_wide(tmp_path, "t,f,rx,e", rows, 'station = "rx", emitter = "e"')
+    assert result.error is None and result.tables["log.frequencies"].notes == ()

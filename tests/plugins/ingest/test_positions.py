@@ -90,6 +90,7 @@ def test_cartesian_rows_velocity_and_clock_of_two_movers(tmp_path):
 BAD_ROWS = {
     "-91.0,-26.5,15": "latitude out of range: -91 deg, not -90 to 90; are latitude and longitude swapped?",
     "-41.5,-186.5,15": "longitude out of range",
+    "-41.5,370.5,15": "longitude out of range",
     "-41.5,-26.5,-900": "height out of range",
     "-41.5,-26.5,": "height is empty",
     "-41.5,nan,15": "longitude is not a finite number: 'nan'",
